@@ -1,0 +1,5 @@
+"""``python -m adjustplan``."""
+
+from adjustplan.cli import main
+
+main()

@@ -1,0 +1,55 @@
+"""Commands that run a plan: fit, write."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from adjustplan.cli.app import app
+from adjustplan.cli.arguments import Force, Format, OutputFormat, PlanPath
+from adjustplan.plan import read_plan
+from adjustplan.report import terminal
+
+Limit = Annotated[int, typer.Option("--limit", min=0, help="Fit at most this many minimal sufficient sets.")]
+
+
+@app.command()
+def fit(plan: PlanPath, limit: Limit = 20, form: Format = OutputFormat.text) -> None:
+    """Fit the planned regression beside the crude one.
+
+    Crude and adjusted estimates come from the same rows.
+
+    The planned set, its alternatives and every minimal sufficient set that the data allow are fitted, so that a reader
+    sees whether they agree. The exit code is 1 when there are findings above a note.
+
+    \b
+    adjustplan fit plan.toml
+    """
+    from adjustplan.estimate import fit as fit_plan
+
+    result = fit_plan(read_plan(plan), limit=limit)
+    terminal.show(result, form.value)
+    raise typer.Exit(0 if result.clean else 1)
+
+
+@app.command()
+def write(
+    plan: PlanPath,
+    output: Annotated[Path, typer.Option("--output", "-o", metavar="DIR", help="The folder to write into.")],
+    limit: Limit = 20,
+    force: Force = False,
+) -> None:
+    """Write the document that defends the adjustment.
+
+    It holds the question, the picture, the roles, the sufficient sets, the chosen set and why, every arrow and its
+    reason, crude beside adjusted estimates, and the cautions: Markdown, with the picture as SVG beside it.
+
+    \b
+    adjustplan write plan.toml -o document
+    """
+    from adjustplan.report import write_document
+
+    for path in write_document(read_plan(plan), output, limit=limit, force=force):
+        typer.echo(f"wrote {path}", err=True)

@@ -1,0 +1,21 @@
+"""Data: from a file of rows to covariate patterns, the only thing the models ever see.
+
+``source`` opens a CSV or Parquet file inside an embedded engine, ``reduction`` has the engine count the rows
+of each covariate pattern, ``patterns`` holds the counts, and ``checks`` says what is wrong with the columns.
+"""
+
+from adjustplan.data.checks import check_columns, check_values
+from adjustplan.data.patterns import Kind, Outcome, Patterns
+from adjustplan.data.reduction import reduce_to_patterns
+from adjustplan.data.source import Source, open_data
+
+__all__ = [
+    "Kind",
+    "Outcome",
+    "Patterns",
+    "Source",
+    "check_columns",
+    "check_values",
+    "open_data",
+    "reduce_to_patterns",
+]

@@ -1,0 +1,23 @@
+"""Estimates: the crude and the adjusted effect of the exposure, on exactly the same rows.
+
+Importing this floor is cheap; the numerical libraries are loaded when :func:`fit` is first asked for.
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+from adjustplan.estimate.results import AdjustedEstimate, Estimate, Fit
+
+if TYPE_CHECKING:
+    from adjustplan.estimate.fitting import fit
+
+__all__ = ["AdjustedEstimate", "Estimate", "Fit", "fit"]
+
+
+def __getattr__(name: str) -> Any:
+    if name == "fit":
+        from adjustplan.estimate.fitting import fit
+
+        return fit
+    raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
