@@ -76,7 +76,7 @@ def sets(
     found = list_sets(*asked.question, asked.effect, which.value, limit)
     terminal.show(found, form.value)
     if not found.complete and which is WhichSets.all:
-        typer.echo(f"There are more than {limit} minimal sufficient sets; --limit lists more.", err=True)
+        typer.echo(f"Stopped at --limit {limit}: there are more minimal sufficient sets.", err=True)
     raise typer.Exit(0 if found.sets else 1)
 
 
@@ -158,7 +158,7 @@ def trace(
     shown = [path for path in looked_at[:limit] if state is PathState.all or path.open is (state is PathState.open)]
     terminal.show_paths(shown, asked.exposure, asked.outcome, sorted(held), form.value, complete=complete)
     if not complete:
-        typer.echo(f"Stopped after {limit} paths; there are more, and --limit lists them.", err=True)
+        typer.echo(f"Stopped at --limit {limit}: there are more paths.", err=True)
 
 
 @app.command()

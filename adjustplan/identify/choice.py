@@ -49,6 +49,8 @@ class SetList(Tabular):
 
     def __str__(self) -> str:
         lines = [self.caption(), *(f"  {set_text(members)}" for members in self.sets)]
+        if () in self.sets:
+            lines.append("Nothing has to be adjusted for.")
         return "\n".join([*lines, self.note] if self.note else lines)
 
     def caption(self) -> str:

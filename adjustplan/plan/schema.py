@@ -6,6 +6,7 @@ analysis. Only the title, the graph and the question must be there; a plan grows
 
 from __future__ import annotations
 
+import json
 from typing import Annotated, Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, StringConstraints
@@ -85,3 +86,7 @@ class PlanFile(Table):
 def json_schema() -> dict[str, Any]:
     """The JSON Schema of the plan file, for editors that complete and check TOML."""
     return {"$schema": "https://json-schema.org/draft/2020-12/schema", **PlanFile.model_json_schema(by_alias=True)}
+
+
+if __name__ == "__main__":
+    print(json.dumps(json_schema(), indent=2))

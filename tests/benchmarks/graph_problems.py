@@ -33,7 +33,7 @@ class Problem:
         self.graph = self.fresh_graph()
         directed = nx.DiGraph(self.arrows)
         causal = nx.descendants(directed, self.exposure) & (nx.ancestors(directed, self.outcome) | {self.outcome})
-        self.forbidden = set(causal).union(*(nx.descendants(directed, name) for name in causal))
+        self.forbidden = {name for layer in nx.bfs_layers(directed, causal) for name in layer}
         self.back_door = directed.copy()
         self.back_door.remove_edges_from([(self.exposure, name) for name in causal])
         self.allowed = set(directed) - self.forbidden - {self.exposure, self.outcome}
@@ -65,14 +65,14 @@ class Problem:
 def random_graph(arrows: int) -> Problem:
     """A random graph, ten arrows at the average variable: five causes each, from anything before it.
 
-    The exposure stands four fifths down the order, the outcome is the last thing it affects, so most of the
-    graph lies upstream of both and offers ways round.
+    The exposure stands half-way down the order and the outcome is the last thing it affects, so a good part of
+    the graph lies upstream of the two and offers ways round.
     """
     draw = random.Random(arrows)
     size = max(arrows // 5, 12)
     pairs = [(f"v{cause}", f"v{v}") for v in range(1, size) for cause in draw.sample(range(v), min(5, v))]
     directed = nx.DiGraph(pairs)
-    place = size * 4 // 5
+    place = size // 2
     while not (affected := nx.descendants(directed, f"v{place}")):
         place += 1
     outcome = max(affected, key=lambda name: int(name[1:]))

@@ -52,7 +52,7 @@ def test_a_limit_that_cuts_the_list_is_said(run: Run, folder: Path) -> None:
     told = json.loads(done.stdout)
     assert len(told["sets"]) == 3
     assert told["complete"] is False
-    assert "more than 3" in done.stderr
+    assert "Stopped at --limit 3" in done.stderr
 
 
 def test_judge_says_what_is_wrong_with_a_set(run: Run) -> None:
@@ -96,7 +96,7 @@ def test_trace_stops_at_its_limit_and_says_so(run: Run) -> None:
     told = json.loads(done.stdout)
     assert len(told["paths"]) == 2
     assert told["complete"] is False
-    assert "Stopped after 2 paths" in done.stderr
+    assert "Stopped at --limit 2" in done.stderr
 
 
 def test_draw_writes_a_picture_and_keeps_an_existing_one(run: Run, folder: Path) -> None:

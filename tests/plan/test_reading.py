@@ -9,6 +9,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+import adjustplan.plan
 from adjustplan.errors import AdjustplanError, Finding, GraphError, PlanError
 from adjustplan.plan import json_schema, read_plan
 from adjustplan.plan.places import line_numbers
@@ -133,6 +134,11 @@ def test_the_json_schema_names_the_keys_as_the_file_does() -> None:
     assert "set" in schema["$defs"]["Adjustment"]["properties"]
     assert schema["$defs"]["Study"]["additionalProperties"] is False
     json.dumps(schema)
+
+
+def test_the_committed_json_schema_is_the_models_own() -> None:
+    committed = Path(adjustplan.plan.__file__).with_name("plan.schema.json")
+    assert json.loads(committed.read_text(encoding="utf-8")) == json_schema()
 
 
 def test_text_in_triple_quotes_holds_no_keys() -> None:
