@@ -41,7 +41,7 @@ def cheapest_sufficient_set(
 
     A variable without a stated cost costs 1.
     """
-    return _minimum_cut(query(graph, exposure, outcome, effect), lambda variable: Fraction(repr(variable.cost)))
+    return _minimum_cut(query(graph, exposure, outcome, effect), lambda variable: Fraction(str(float(variable.cost))))
 
 
 def most_precise_set(graph: CausalGraph, exposure: str, outcome: str, effect: Effect = "total") -> PreciseSet:

@@ -74,8 +74,8 @@ def stream_paths(
     """All paths between two variables that go only where ``passes`` lets them, the shortest first.
 
     Paths of one length come in the order of the graph's variables; with ``causal`` False, causal ones are left out. The
-    search goes one length at a time and leaves a path as soon as too few steps remain to reach the end, whatever it
-    still has to avoid.
+    search goes one length at a time and leaves a path as soon as no way of the steps that remain leads to the end past
+    the variables already visited.
     """
     may_pass = passes or (lambda _place, _into, _out: True)
     remaining = _steps_to(graph, end, may_pass, causal)
@@ -158,6 +158,42 @@ def _steps_to(graph: CausalGraph, end: int, passes: Passes, causal: bool) -> dic
     return fewest
 
 
+def _leads_on(
+    graph: CausalGraph,
+    step: Step,
+    end: int,
+    passes: Passes,
+    remaining: dict[Step, int],
+    route: Sequence[int],
+    most: int,
+) -> bool:
+    """Whether a way of at most so many steps leads from a step to the end past what is on the route already.
+
+    Without this, a part of the graph that hangs on one variable would be searched in full, path by path, before it is
+    found that none comes back. ``remaining`` keeps the search on its course, so that it seldom looks far.
+    """
+    if remaining.get(step, math.inf) > most:
+        return False
+    layer, seen = [step], {step}
+    while layer and most > 0:
+        most -= 1
+        following = []
+        for place, into, straight in layer:
+            for further in _moves(graph, place, straight):
+                if (
+                    further not in seen
+                    and remaining.get(further, math.inf) <= most
+                    and further[0] not in route
+                    and passes(place, into, further[1])
+                ):
+                    if further[0] == end:
+                        return True
+                    seen.add(further)
+                    following.append(further)
+        layer = following
+    return False
+
+
 def _paths_of_length(
     graph: CausalGraph, start: int, end: int, passes: Passes, remaining: dict[Step, int], length: int, cut: list[bool]
 ) -> Iterator[Path]:
@@ -176,11 +212,12 @@ def _paths_of_length(
         place, into, straight = step
         if place in route or (forward and not passes(route[-1], forward[-1], into)):
             continue
-        if len(route) + remaining.get(step, math.inf) > length:
-            cut[0] = cut[0] or step in remaining
-        elif place == end:
-            if len(route) == length:
-                yield Path(tuple(graph.variables[p].name for p in (*route, end)), (*forward, into))
+        left = length - len(route)
+        if place == end:
+            if left == 0 and step in remaining:
+                yield path_along(graph, (*route, end))
+        elif not _leads_on(graph, step, end, passes, remaining, route, left):
+            cut[0] = cut[0] or _leads_on(graph, step, end, passes, remaining, route, len(graph))
         else:
             route.append(place)
             forward.append(into)

@@ -84,6 +84,11 @@ class Standing:
         exposure = self.asked.kernel.set_of((self.asked.exposure,))
         return self.asked.kernel.descendants(exposure) & ~exposure
 
+    @cached_property
+    def affected_by_mediators(self) -> int:
+        """What has a directed path from a variable between exposure and outcome, those variables included."""
+        return self.asked.kernel.descendants(self.asked.on_causal_paths & ~self.asked.ends)
+
     def is_instrument(self, place: int) -> bool:
         """Whether a variable is related to the exposure, and to the outcome only through it.
 
@@ -137,7 +142,7 @@ def _roles(standing: Standing, place: int) -> Iterator[tuple[str, str]]:
         yield "outcome predictor", str(directed_path(graph, place, outcome))
     if affected and not between:
         yield "affected by exposure", str(directed_path(graph, exposure, place))
-    if not between:
+    if not between and holds(standing.affected_by_mediators, place):
         paths = (directed_path(graph, mediator, place) for mediator in mediators(asked))
         if path := next(filter(None, paths), None):
             yield "affected by mediator", str(path)
