@@ -55,6 +55,11 @@ class Finding:
         """The same finding, said to be in ``file``."""
         return replace(self, file=file)
 
+    def to_dict(self) -> dict[str, str | int | None]:
+        """The finding as JSON has it."""
+        keys = ("code", "severity", "message", "file", "line", "remedy")
+        return {key: getattr(self, key) for key in keys}
+
     def __str__(self) -> str:
         head = f"{self.place}: {self.message}" if self.place else self.message
         text = f"{head} {self.remedy}".rstrip()

@@ -5,13 +5,16 @@ from __future__ import annotations
 from dataclasses import dataclass
 from enum import StrEnum
 from pathlib import Path
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from adjustplan.errors import Finding, QuestionError
 from adjustplan.graph import CausalGraph, read_graph
 from adjustplan.identify import Effect
+
+if TYPE_CHECKING:
+    from adjustplan.plan.schema import Study
 
 
 class OutputFormat(StrEnum):
@@ -59,6 +62,7 @@ class Asked:
     outcome: str
     effect: Effect
     planned: tuple[str, ...] | None = None
+    study: Study | None = None
 
     @property
     def question(self) -> tuple[CausalGraph, str, str]:
@@ -70,16 +74,17 @@ def ask(subject: Path, exposure: str | None, outcome: str | None, effect: Effect
     """The question: from the options, and what they leave out from the plan."""
     stated: Effect = "direct" if effect is EffectName.direct else "total"
     if subject.suffix.lower() == ".toml":
-        from adjustplan.plan import read_plan
+        from adjustplan.plan import read_plan  # a graph alone does not need it
 
         plan = read_plan(subject)
         asked = plan.question
         return Asked(
-            plan.graph,
+            plan.judged_graph,
             exposure or asked.exposure,
             outcome or asked.outcome,
             stated if effect else asked.effect,
             None if plan.file.adjustment is None else tuple(plan.file.adjustment.members),
+            plan.study,
         )
     graph = read_graph(subject)
     absent = [option for option, value in (("--exposure/-x", exposure), ("--outcome/-y", outcome)) if value is None]

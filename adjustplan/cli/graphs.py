@@ -27,6 +27,7 @@ from adjustplan.identify import list_sets
 from adjustplan.identify import roles as roles_of
 from adjustplan.identify import trace as trace_paths
 from adjustplan.report import terminal
+from adjustplan.study.consequences import sampling_fault
 
 
 class WhichSets(StrEnum):
@@ -103,7 +104,10 @@ def judge(
     asked = ask(subject, exposure, outcome, effect)
     verdict = judge_set(*asked.question, members or asked.planned or (), asked.effect)
     terminal.show(verdict, form.value)
-    raise typer.Exit(0 if verdict.sufficient else 1)
+    linked = sampling_fault(*asked.question, verdict.adjust, asked.study)
+    if linked:
+        typer.echo(linked, err=True)
+    raise typer.Exit(1 if linked or not verdict.sufficient else 0)
 
 
 @app.command()

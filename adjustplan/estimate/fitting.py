@@ -21,7 +21,10 @@ from adjustplan.estimate.results import AdjustedEstimate, Estimate, Fit
 from adjustplan.estimate.sets import ReportedSet, reported_sets
 from adjustplan.estimate.threads import one_thread
 from adjustplan.plan import Plan
-from adjustplan.study import DESIGNS
+from adjustplan.study import DESIGNS, Measure
+
+BUILT: tuple[Measure, ...] = ("mean difference", "odds ratio", "risk ratio")
+"""The measures for which there is a regression."""
 
 
 def fit(plan: Plan, *, limit: int = 20) -> Fit:
@@ -100,6 +103,10 @@ def fit(plan: Plan, *, limit: int = 20) -> Fit:
 
 
 def _refuse_by_design(plan: Plan) -> None:
+    if plan.analysis.measure not in BUILT:
+        message = f"“{plan.analysis.measure}” cannot be fitted by adjustplan yet."
+        key = ("analysis", "measure")
+        raise plan.error("analysis-measure-not-built", message, f"It fits: {', '.join(BUILT)}.", key)
     if plan.study is None:
         return
     design, measure = DESIGNS[plan.study.design], plan.analysis.measure

@@ -127,11 +127,11 @@ class Fit(Tabular):
         plain = asdict(self)
         plain["rows_dropped"] = self.rows_total - self.rows
         plain["contrast"] = {"exposed": self.contrast[0], "reference": self.contrast[1]}
-        plain["findings"] = [_finding(finding) for finding in self.findings]
+        plain["findings"] = [finding.to_dict() for finding in self.findings]
         for row, result in zip(plain["adjusted"], self.adjusted, strict=True):
             row["set"] = list(row.pop("members"))
             row["origins"] = list(result.origins)
-            row["findings"] = [_finding(finding) for finding in result.findings]
+            row["findings"] = [finding.to_dict() for finding in result.findings]
         plain["adjusted"] = list(plain["adjusted"])
         return plain
 
@@ -199,7 +199,3 @@ def _interval(result: Estimate | AdjustedEstimate | None) -> str:
     if result is None or result.estimate is None:
         return "not estimated"
     return f"{result.estimate:.3g} ({result.lower:.3g} to {result.upper:.3g})"
-
-
-def _finding(finding: Finding) -> dict[str, str | int | None]:
-    return {name: getattr(finding, name) for name in ("code", "severity", "message", "file", "line", "remedy")}

@@ -50,11 +50,11 @@ def reported_sets(
         _choose(chosen, plan, alternative.members, "alternative", alternative.rationale, key)
     lacking = [
         variable.name
-        for variable in plan.graph
+        for variable in plan.judged_graph
         if not (variable.unmeasured or variable.restricted or variable.name in usable)
         and variable.name not in (question.exposure, question.outcome)
     ]
-    within = _without(plan.graph, lacking) if lacking else plan.graph
+    within = _without(plan.judged_graph, lacking) if lacking else plan.judged_graph
     found = list(
         islice(iterate_sufficient_sets(within, question.exposure, question.outcome, question.effect), limit + 1)
     )
@@ -103,7 +103,7 @@ def _choose(
         found = Finding("adjustment-unmeasured", message, remedy, "error", file, line)
         chosen[members] = ReportedSet(members, (origin,), False, rationale, (found,))
         return
-    sufficient = is_sufficient(plan.graph, question.exposure, question.outcome, set(members), question.effect)
+    sufficient = is_sufficient(plan.judged_graph, question.exposure, question.outcome, set(members), question.effect)
     message = f"The {origin} set {shown} is not sufficient by the graph for the {question.effect} effect."
     remedy = "Judge it against the graph to see which paths stay open, or which member does harm."
     warning = Finding("adjustment-insufficient", message, remedy, "warning", file, line)
@@ -123,5 +123,5 @@ def _left_out(plan: Plan, lacking: Collection[str], limit: int) -> list[str]:
     if not lacking:
         return []
     question = plan.question
-    first = islice(iterate_sufficient_sets(plan.graph, question.exposure, question.outcome, question.effect), limit + 1)
-    return sorted(set(lacking) & set().union(*first))
+    every = iterate_sufficient_sets(plan.judged_graph, question.exposure, question.outcome, question.effect)
+    return sorted(set(lacking) & set().union(*islice(every, limit + 1)))

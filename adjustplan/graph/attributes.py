@@ -19,7 +19,7 @@ def read_variable(name: str, data: Mapping[str, Any], ignored: set[str]) -> Vari
     GraphError
         If an attribute has a value that it cannot have.
     """
-    known = {"label", "unmeasured", "restricted", "wave", "cost"}
+    known = {"label", "unmeasured", "restricted", "wave", "cost", "proxy_of"}
     ignored |= set(data) - known
     return Variable(
         name,
@@ -28,6 +28,7 @@ def read_variable(name: str, data: Mapping[str, Any], ignored: set[str]) -> Vari
         restricted=_flag(name, "restricted", data),
         wave=_number(name, "wave", data, int, None),
         cost=_number(name, "cost", data, float, 1.0),
+        proxy_of=str(data.get("proxy_of", "")),
     )
 
 

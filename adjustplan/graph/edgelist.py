@@ -96,7 +96,7 @@ class _Reading:
             self.variable_places[word.text] = (number, word.column)
             for attribute, value, column in statement.items:
                 if attribute in said:
-                    message = f"The {attribute} of “{word.text}” is given twice."
+                    message = f"The {attribute.replace('_of', '')} of “{word.text}” is given twice."
                     if value is True:
                         message = f"“{word.text}” is called {attribute} twice."
                     self._complain(number, "graph-item-twice", message, "Keep one.", column)
@@ -161,6 +161,8 @@ def _written_items(variable: Variable) -> Iterable[str]:
     for attribute, value in attributes(variable).items():
         if attribute == "label":
             yield quote(str(value))
+        elif attribute == "proxy_of":
+            yield f"proxy of {written_name(str(value))}"
         elif value is True:
             yield attribute
         else:

@@ -42,6 +42,8 @@ class Variable:
         When it is measured; an arrow never points to an earlier wave.
     cost : float
         What measuring it costs, in any unit that is the same for all; finite, 0 or more.
+    proxy_of : str
+        The variable that it is an imperfect measurement of; empty where it is none.
     """
 
     name: str
@@ -50,6 +52,7 @@ class Variable:
     restricted: bool = False
     wave: int | None = None
     cost: float = 1.0
+    proxy_of: str = ""
 
     @property
     def title(self) -> str:
@@ -123,8 +126,8 @@ class CausalGraph:
     def from_networkx(cls, graph: nx.DiGraph[Any]) -> CausalGraph:
         """The causal graph that a networkx digraph spells out.
 
-        Node attributes ``label``, ``unmeasured``, ``restricted``, ``wave`` and ``cost`` and the edge attribute
-        ``reason`` are taken over; node keys become names through ``str``. Others are ignored.
+        Node attributes ``label``, ``unmeasured``, ``restricted``, ``wave``, ``cost`` and ``proxy_of`` and the edge
+        attribute ``reason`` are taken over; node keys become names through ``str``. Others are ignored.
         """
         variables = [
             Variable(
@@ -134,6 +137,7 @@ class CausalGraph:
                 restricted=bool(data.get("restricted", False)),
                 wave=data.get("wave"),
                 cost=float(data.get("cost", 1.0)),
+                proxy_of=str(data.get("proxy_of", "")),
             )
             for node, data in graph.nodes(data=True)
         ]
@@ -236,6 +240,8 @@ def attributes(variable: Variable) -> dict[str, str | bool | int | float]:
         told["wave"] = variable.wave
     if variable.cost != 1.0:
         told["cost"] = variable.cost
+    if variable.proxy_of:
+        told["proxy_of"] = variable.proxy_of
     return told
 
 
@@ -247,6 +253,7 @@ def faults(variables: Iterable[Variable], arrows: Iterable[Arrow]) -> Iterator[F
         if variable.name in by_name:
             yield Fault("graph-variable-twice", f"“{variable.name}” is described twice.", "Keep one.", variable)
         by_name.setdefault(variable.name, variable)
+    yield from _proxy_faults(by_name)
     if not by_name:
         yield Fault("graph-empty", "The graph has no variables.", "Write at least one arrow: cause -> effect.")
     drawn: set[tuple[str, str]] = set()
@@ -283,6 +290,16 @@ def _variable_faults(variable: Variable) -> Iterator[Fault]:
     if not math.isfinite(variable.cost) or variable.cost < 0:
         message = f"The cost of “{variable.name}” is {variable.cost}."
         yield Fault("graph-bad-cost", message, "A cost is a finite number, 0 or more.", variable)
+
+
+def _proxy_faults(by_name: Mapping[str, Variable]) -> Iterator[Fault]:
+    for variable in by_name.values():
+        true = variable.proxy_of
+        if true and true == variable.name:
+            yield Fault("graph-bad-proxy", f"“{true}” is a proxy of itself.", "Name what it measures.", variable)
+        elif true and true not in by_name:
+            message = f"“{variable.name}” is a proxy of “{true}”, which is not in the graph."
+            yield Fault("graph-bad-proxy", message, did_you_mean(true, by_name, f"Draw “{true}”."), variable)
 
 
 def _cycle_fault(names: list[str], causes: Mapping[str, list[str]]) -> Iterator[Fault]:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 import re
+import unicodedata
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -15,7 +16,8 @@ Complaint = Callable[[str, str, str, int], None]
 """Called with the code, message, remedy and column of what is wrong in a line."""
 
 _ITEM = re.compile(r'\s*((?:"(?:[^"\\]|\\.)*"|[^",])*|.+?)\s*(?:,|$)')
-_ITEMS = ("unmeasured", "restricted", "wave=", "cost=")
+_PROXY = re.compile(r"proxy\s+of\s+(\S.*)")
+_ITEMS = ("unmeasured", "restricted", "proxy of", "wave=", "cost=")
 
 
 @dataclass(frozen=True, slots=True)
@@ -126,6 +128,9 @@ def _item(text: str, column: int, complain: Complaint) -> tuple[str, Value] | No
         return "label", unquote(text)
     if text in ("unmeasured", "restricted"):
         return text, True
+    if proxy := _PROXY.fullmatch(text):
+        named = unquote(proxy[1]) if is_quoted(proxy[1]) else unicodedata.normalize("NFC", proxy[1])
+        return "proxy_of", named
     name, equals, value = (part.strip() for part in text.partition("="))
     if equals and name == "wave":
         if re.fullmatch(r"[+-]?\d+", value):
@@ -139,7 +144,9 @@ def _item(text: str, column: int, complain: Complaint) -> tuple[str, Value] | No
     elif text.startswith('"'):
         complain("graph-syntax", "A double quote is opened and never closed.", "Close it on the same line.", column)
     else:
-        otherwise = "Known are: unmeasured, restricted, wave=<integer>, cost=<number>, and a label in double quotes."
+        otherwise = (
+            "Known are unmeasured, restricted, proxy of <name>, wave=<integer>, cost=<number>, and a quoted label."
+        )
         remedy = did_you_mean(f"{name}=" if equals else name, _ITEMS, otherwise)
         complain("graph-unknown-item", f"Unknown item “{text}”.", remedy, column)
     return None

@@ -18,6 +18,7 @@ from adjustplan.files import read_text
 from adjustplan.graph import CausalGraph, read_graph
 from adjustplan.plan.places import Key, line_numbers, line_of
 from adjustplan.plan.schema import Adjustment, Analysis, PlanFile, Question, Study
+from adjustplan.study.consequences import under_design
 
 T = TypeVar("T")
 
@@ -64,6 +65,11 @@ class Plan:
     def analysis(self) -> Analysis:
         """The planned analysis; PlanError where the plan has none yet."""
         return self._needed(self.file.analysis, "analysis", 'measure = "risk ratio" and data = "…"')
+
+    @cached_property
+    def judged_graph(self) -> CausalGraph:
+        """The graph to which sufficiency is put under the study's design; see ``study.consequences``."""
+        return under_design(self.graph, self.question.outcome, self.study)
 
     @property
     def graph_path(self) -> Path:
@@ -179,7 +185,11 @@ def _unknown_variables(path: Path, file: PlanFile, graph: CausalGraph, lines: di
     named: list[tuple[Key, str]] = [
         (("question", "exposure"), question.exposure),
         (("question", "outcome"), question.outcome),
+        *((("question", "other_exposures"), name) for name in question.other_exposures),
     ]
+    if file.study:
+        named += [(("study", "matched"), name) for name in file.study.matched]
+        named += [(("study", key), name) for key in ("sampled", "lost") if (name := getattr(file.study, key))]
     if adjustment:
         named += [(("adjustment", "set"), name) for name in adjustment.members]
         for place, alternative in enumerate(adjustment.alternative):

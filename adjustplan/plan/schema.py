@@ -6,16 +6,19 @@ analysis. Only the title, the graph and the question must be there; a plan grows
 
 from __future__ import annotations
 
+import datetime
 import json
 from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, StringConstraints
+from pydantic import BaseModel, ConfigDict, Field, PositiveInt, StringConstraints
 
-from adjustplan.study import DesignName, Measure
+from adjustplan.study import DesignName, Measure, OutcomeType, Sampling
 
 Name = Annotated[str, StringConstraints(min_length=1)]
 Form = Annotated[str, StringConstraints(pattern=r"^(category|linear|spline\([2-9]\))$")]
 Level = str | bool | int | float
+Moment = datetime.date | int
+Share = Annotated[float, Field(gt=0, lt=1)]
 
 
 class Table(BaseModel):
@@ -34,6 +37,10 @@ class Contrast(Table):
 class Question(Table):
     """What is asked."""
 
+    other_exposures: list[Name] = Field(
+        [], description="Further exposures whose effects are to be read off the same model (each needs its own set)."
+    )
+
     exposure: Name = Field(description="A variable of the graph.")
     outcome: Name = Field(description="A variable of the graph.")
     effect: Literal["total", "direct"] = Field("total", description="Through all paths, or not through any mediator.")
@@ -45,6 +52,26 @@ class Study(Table):
     """How the data come about."""
 
     design: DesignName = Field(description="The study design.")
+    timing: Literal["prospective", "retrospective"] | None = Field(
+        None, description="Cohort: whether people are followed from now on, or from records of the past."
+    )
+    sampling: Sampling | None = Field(None, description="Case-control: how controls are drawn.")
+    sampled: Name | None = Field(
+        None, description="Case-control: the variable of the graph that stands for being sampled, where it is drawn."
+    )
+    matched: list[Name] = Field([], description="Case-control or cohort: variables that people are matched for.")
+    matching: Literal["individual", "frequency"] | None = Field(None, description="How they are matched.")
+    lost: Name | None = Field(
+        None, description="Cohort or trial: the restricted variable of the graph that stands for still being followed."
+    )
+    adherence: bool = Field(False, description="Trial: whether the question is about adhering, not about assignment.")
+    exposure_begins: Moment | None = Field(None, description="When the exposure can begin: a date or a wave.")
+    exposure_known: Moment | None = Field(None, description="When it is settled who counts as exposed.")
+    follow_up_begins: Moment | None = Field(None, description="When the outcome begins to count.")
+    size: PositiveInt | None = Field(None, description="Planned number of people (case-control: of cases).")
+    assumed_risk: Share | None = Field(None, description="Assumed risk of the outcome in the reference group.")
+    exposed_share: Share | None = Field(None, description="Assumed share of the exposed (case-control: of controls).")
+    controls_per_case: float | None = Field(None, gt=0, description="Case-control: controls for each case.")
 
 
 class ChosenSet(Table):
@@ -64,12 +91,20 @@ class Analysis(Table):
     """The model to be fitted and the data it is fitted to."""
 
     measure: Measure = Field(description="The measure of effect that is estimated.")
+    outcome_type: OutcomeType | None = Field(None, description="What kind of outcome it is.")
     data: Name | None = Field(None, description="A CSV or Parquet file, relative to the plan.")
     columns: dict[str, Name] = Field({}, description="variable = column, where the two differ.")
     forms: dict[str, Form] = Field({}, description='variable = "category" | "linear" | "spline(4)".')
     variance: Literal["model", "robust"] | None = Field(
         None, description="Which standard error; by default robust for a risk ratio, of the model otherwise."
     )
+
+
+class Waiver(Table):
+    """A rule of ``adjustplan check`` that the team knowingly does not follow."""
+
+    rule: Name = Field(description="The rule's code.")
+    reason: Name = Field(description="Why it is waived; the document prints it.")
 
 
 class PlanFile(Table):
@@ -81,6 +116,7 @@ class PlanFile(Table):
     study: Study | None = None
     adjustment: Adjustment | None = None
     analysis: Analysis | None = None
+    waiver: list[Waiver] = Field([], description="Rules that are waived, each with a reason.")
 
 
 def json_schema() -> dict[str, Any]:

@@ -92,7 +92,7 @@ def write_document(plan: Plan, folder: str | Path, *, limit: int = 20, force: bo
 def gather(plan: Plan, *, limit: int = 20) -> Material:
     """Work out what the document says."""
     question, adjustment = plan.question, plan.file.adjustment
-    asked = (plan.graph, question.exposure, question.outcome)
+    asked = (plan.judged_graph, question.exposure, question.outcome)
     found = roles(*asked, question.effect)
     proposals = [adjustment, *adjustment.alternative] if adjustment else []
     verdicts = tuple(judge(*asked, proposal.members, question.effect) for proposal in proposals)

@@ -85,6 +85,9 @@ def test_a_byte_order_mark_is_left_out(tmp_path) -> None:
         ("a -> b\na: cost=nan", 2, 4, "finite"),
         ("a -> b\na: unmeasured, restricted", 2, 1, "both unmeasured and restricted"),
         ("a -> b\na: wave=1\na: wave=2", 3, 4, "given twice"),
+        ("a -> b\nb: proxy of c", 2, 1, "not in the graph"),
+        ("a -> b\nb: proxy of b", 2, 1, "proxy of itself"),
+        ("a -> b\nb: proxy a", 2, 4, "Unknown item"),
         ("", None, None, "no variables"),
         ("# nothing\n\n", None, None, "no variables"),
     ],
@@ -136,7 +139,7 @@ def graphs(draw: st.DrawFn) -> CausalGraph:
         if draw(st.booleans())
     ]
     variables = []
-    for name in order:
+    for place, name in enumerate(order):
         state = draw(st.sampled_from(["", "unmeasured", "restricted"]))
         variables.append(
             Variable(
@@ -146,6 +149,7 @@ def graphs(draw: st.DrawFn) -> CausalGraph:
                 restricted=state == "restricted",
                 wave=draw(st.none() | st.just(3)),
                 cost=draw(st.floats(0, 1e300)),
+                proxy_of=draw(st.sampled_from(["", *order[:place]])),
             )
         )
     return CausalGraph(arrows, variables)

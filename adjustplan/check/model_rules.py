@@ -1,0 +1,45 @@
+"""Rules about the regression that is planned."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from adjustplan.check.registry import rule
+from adjustplan.check.subject import Subject
+from adjustplan.errors import Finding
+from adjustplan.identify.showing import list_text
+from adjustplan.study import OUTCOME_TYPES
+
+
+@rule(
+    "model-outcome",
+    "error",
+    finds="A measure that does not fit the type of the outcome.",
+    matters="A risk ratio of a continuous outcome, or a mean difference of times to an event, has no meaning.",
+    mend="Choose a measure made for this type of outcome, or mend outcome_type.",
+)
+def outcome(subject: Subject) -> Iterator[Finding]:
+    analysis = subject.plan.file.analysis
+    if analysis and analysis.outcome_type and analysis.outcome_type not in OUTCOME_TYPES[analysis.measure]:
+        fitting = [measure for measure, types in OUTCOME_TYPES.items() if analysis.outcome_type in types]
+        message = f"A {analysis.measure} does not fit a {analysis.outcome_type} outcome."
+        yield subject.finding(message, f"Fitting are: {list_text(fitting, 'or')}.", "analysis", "measure")
+
+
+@rule(
+    "model-form",
+    "warning",
+    finds="A member of the set whose form in the model is not stated.",
+    matters="A continuous covariate entered as a straight line adjusts only for a straight line; a coded category"
+    " entered as a number adjusts for nonsense. What is left open now will be chosen with the data in view.",
+    mend="State it in [analysis.forms]: “category”, “linear” or “spline(4)”.",
+    source="STROBE item 11 (von Elm et al. 2007, PLoS Med 4:e296).",
+)
+def form(subject: Subject) -> Iterator[Finding]:
+    analysis = subject.plan.file.analysis
+    if analysis:
+        for name in subject.members:
+            if name not in analysis.forms:
+                message = f"The form of “{name}” is not stated."
+                remedy = f'Write {name} = "category", "linear" or "spline(4)" in [analysis.forms].'
+                yield subject.finding(message, remedy, "analysis", "forms")
