@@ -94,6 +94,10 @@ class PlanError(AdjustplanError):
     """A plan file cannot be read or does not fit together."""
 
 
+class SealError(AdjustplanError):
+    """A plan's seal cannot be read, does not hold, or cannot be made or amended (nothing changed, sealed already)."""
+
+
 class DataError(AdjustplanError):
     """The data cannot serve the plan (a missing column, an outcome with one level)."""
 

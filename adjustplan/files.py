@@ -23,10 +23,12 @@ def read_text(path: str | Path, raises: type[AdjustplanError], subject: str) -> 
     place = Path(path)
     try:
         data = place.read_bytes()
-    except OSError as error:
+    except (OSError, ValueError) as error:  # a ValueError where the name holds what no file's name can
         names = [str(place.with_name(name)) for name in _names_beside(place)]
         remedy = did_you_mean(str(place), names, f"Name an existing {subject} file.")
-        finding = Finding(f"{subject}-unreadable", f"{error.strerror}.", remedy, file=str(path))
+        finding = Finding(
+            f"{subject}-unreadable", f"{getattr(error, 'strerror', None) or error}.", remedy, file=str(path)
+        )
         raise raises(finding) from None
     try:
         return data.decode("utf-8-sig")
@@ -80,5 +82,5 @@ def refuse_existing(path: Path, *, force: bool) -> None:
 def _names_beside(path: Path) -> list[str]:
     try:
         return sorted(entry.name for entry in path.parent.iterdir())
-    except OSError:
+    except (OSError, ValueError):
         return []

@@ -4,8 +4,10 @@ from adjustplan.check import (  # noqa: F401 (importing them registers their rul
     adjustment_rules,
     course_rules,
     data_rules,
+    feasibility_rules,
     graph_rules,
     model_rules,
+    registration_rules,
     reporting_rules,
     study_rules,
 )

@@ -21,7 +21,8 @@ _SET = ("adjustment", "set")
     mend="Add [adjustment] with set = […] and a rationale; the set may be empty.",
 )
 def none(subject: Subject) -> Iterator[Finding]:
-    if subject.plan.file.adjustment is None:
+    estimates = subject.design is None or bool(subject.design.measures)
+    if estimates and subject.plan.file.adjustment is None:
         yield subject.finding("The plan chooses no set.", "Add [adjustment] with set = […] and a rationale.")
 
 
@@ -37,9 +38,10 @@ def insufficient(subject: Subject) -> Iterator[Finding]:
     if subject.plan.file.adjustment is None:
         return
     none_at_all = why_no_set(subject.graph, subject.exposure, subject.outcome, subject.plan.question.effect)
+    absent = {role.name for role in _absent_though_needed(subject)}
     for path in subject.verdict.open_paths:
-        if path.opened_by:
-            continue  # a member or a restricted variable opens it, which other rules name
+        if path.opened_by or absent & set(path.path.others):
+            continue  # what opens it, or the needed variable that would block it, is named by a rule of its own
         remedy = "No set of measured variables is sufficient." if none_at_all else "“adjustplan sets” lists what does."
         message = f"{set_text(subject.members)} leaves {path.text} open."
         yield subject.finding(message, f"Add a variable that blocks it. {remedy}", *_SET)
@@ -71,9 +73,8 @@ def mediator(subject: Subject) -> Iterator[Finding]:
     source="Shpitser, VanderWeele and Robins 2010, UAI 26:527.",
 )
 def affected(subject: Subject) -> Iterator[Finding]:
-    asked = ["affected by outcome"] + ["affected by mediator"] * (subject.plan.question.effect == "total")
     for role in _members(subject):
-        if found := [word for word in asked if word in role.roles]:
+        if found := [word for word in _affections(subject) if word in role.roles]:
             path = role.evidence[role.roles.index(found[0])]
             yield subject.finding(f"“{role.name}” is {found[0]}: {path}.", "Take it out.", *_SET)
 
@@ -89,7 +90,7 @@ def affected(subject: Subject) -> Iterator[Finding]:
 def collider(subject: Subject) -> Iterator[Finding]:
     opened = {name: path for path in reversed(subject.verdict.open_paths) for name in path.opened_by}
     for role in _members(subject):
-        if role.name in opened:
+        if role.name in opened and not _is_forbidden(subject, role):
             message = f"“{role.name}” is a collider or lies below one; holding it fixed opens {opened[role.name].text}."
             yield subject.finding(message, "Take it out, or block that path.", *_SET)
 
@@ -132,10 +133,9 @@ def unmeasured(subject: Subject) -> Iterator[Finding]:
 )
 def needed(subject: Subject) -> Iterator[Finding]:
     if subject.plan.file.adjustment is not None:
-        for role in subject.roles.variables:
-            if role.advice == "needed" and role.name not in subject.members:
-                message = f"“{role.name}” is in every sufficient set. {role.reason}"
-                yield subject.finding(message, f"Add “{role.name}”.", *_SET)
+        for role in _absent_though_needed(subject):
+            message = f"“{role.name}” is in every sufficient set. {role.reason}"
+            yield subject.finding(message, f"Add “{role.name}”.", *_SET)
 
 
 @rule(
@@ -193,6 +193,22 @@ def second_exposure(subject: Subject) -> Iterator[Finding]:
             message = f"{verdict.caption()} {why}"
             key = ("question", "other_exposures", place)
             yield subject.finding(message, f"Write a plan of its own for “{other}”.", *key)
+
+
+def _affections(subject: Subject) -> tuple[str, ...]:
+    """The ways to be affected that forbid a variable."""
+    by_mediator = ("affected by mediator",) if subject.plan.question.effect == "total" else ()
+    return ("affected by outcome", *by_mediator)
+
+
+def _is_forbidden(subject: Subject, role: VariableRole) -> bool:
+    """Whether another rule says already that the variable is in no sufficient set."""
+    on_path = subject.plan.question.effect == "total" and "mediator" in role.roles
+    return on_path or any(word in role.roles for word in _affections(subject))
+
+
+def _absent_though_needed(subject: Subject) -> Iterator[VariableRole]:
+    return (v for v in subject.roles.variables if v.advice == "needed" and v.name not in subject.members)
 
 
 def _members(subject: Subject) -> Iterator[VariableRole]:

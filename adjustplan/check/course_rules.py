@@ -74,6 +74,8 @@ def lost_free(subject: Subject) -> Iterator[Finding]:
     source="Hernán, Hernández-Díaz and Robins 2004, Epidemiology 15:615.",
 )
 def selection(subject: Subject) -> Iterator[Finding]:
+    if subject.design and not subject.design.measures:
+        return  # no effect is estimated that could be biased
     verdict = subject.verdict
     for path in verdict.open_paths:
         openers = [name for name in path.opened_by if subject.graph[name].restricted]

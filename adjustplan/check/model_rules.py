@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from adjustplan.check.registry import rule
 from adjustplan.check.subject import Subject
 from adjustplan.errors import Finding
-from adjustplan.identify.showing import list_text
+from adjustplan.identify.showing import list_text, with_article
 from adjustplan.study import OUTCOME_TYPES
 
 
@@ -22,7 +22,7 @@ def outcome(subject: Subject) -> Iterator[Finding]:
     analysis = subject.plan.file.analysis
     if analysis and analysis.outcome_type and analysis.outcome_type not in OUTCOME_TYPES[analysis.measure]:
         fitting = [measure for measure, types in OUTCOME_TYPES.items() if analysis.outcome_type in types]
-        message = f"A {analysis.measure} does not fit a {analysis.outcome_type} outcome."
+        message = f"{with_article(analysis.measure).capitalize()} does not fit a {analysis.outcome_type} outcome."
         yield subject.finding(message, f"Fitting are: {list_text(fitting, 'or')}.", "analysis", "measure")
 
 

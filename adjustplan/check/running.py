@@ -109,7 +109,7 @@ def check_plan(path: Path) -> PlanReport:
         return PlanReport(path, path.name, error.findings, read=False)
     subject = Subject(plan)
     found = [finding for rule in RULES.values() for finding in _run(rule, subject)]
-    reasons = {waiver.rule: waiver.reason for waiver in plan.file.waiver}
+    reasons = {waiver.rule: waiver.reason for waiver in plan.file.waiver if not _unwaivable(waiver.rule)}
     found += _bad_waivers(plan)
     kept = [finding for finding in found if finding.code not in reasons]
     waived = [Waived(finding, reasons[finding.code]) for finding in found if finding.code in reasons]
@@ -121,13 +121,22 @@ def _run(rule: Rule, subject: Subject) -> Iterator[Finding]:
         yield replace(finding, code=rule.code, severity=rule.severity)
 
 
+def _unwaivable(code: str) -> bool:
+    """Whether a rule guards the record itself, so that a plan cannot talk itself out of it."""
+    return code in RULES and RULES[code].family == "registration" and RULES[code].severity == "error"
+
+
 def _bad_waivers(plan: Plan) -> Iterator[Finding]:
     for place, waiver in enumerate(plan.file.waiver):
+        line = plan.line("waiver", place, "rule")
         if waiver.rule not in RULES:
             message = f"There is no rule “{waiver.rule}” to waive."
-            line = plan.line("waiver", place, "rule")
             remedy = did_you_mean(waiver.rule, RULES, "Name a rule's code.")
             yield Finding("plan-unknown-rule", message, remedy, file=str(plan.path), line=line)
+        elif _unwaivable(waiver.rule):
+            message = f"“{waiver.rule}” cannot be waived: it guards the record itself."
+            remedy = "Record the change with “adjustplan amend”."
+            yield Finding("plan-unwaivable", message, remedy, file=str(plan.path), line=line)
 
 
 def _order(finding: Finding) -> tuple[int, str, int, str]:

@@ -9,7 +9,7 @@ from adjustplan.check.registry import rule
 from adjustplan.check.subject import Subject
 from adjustplan.errors import Finding
 from adjustplan.identify.paths import directed_path
-from adjustplan.identify.showing import list_text
+from adjustplan.identify.showing import list_text, with_article
 from adjustplan.study import ODDS_RATIO_MEANS
 from adjustplan.study.consequences import sampling_fault
 
@@ -56,7 +56,8 @@ def measure(subject: Subject) -> Iterator[Finding]:
         return
     allowed = list_text(known.measures, "or")
     remedy = f"It can estimate: {allowed}." if allowed else f"No measure of effect can. {known.can_do}"
-    message = f"A {known.name} study cannot estimate a {analysis.measure}: {known.refusal}."
+    design_name = with_article(f"{known.name} study").capitalize()
+    message = f"{design_name} cannot estimate {with_article(analysis.measure)}: {known.refusal}."
     yield subject.finding(message, remedy, "analysis", "measure")
 
 
@@ -71,7 +72,7 @@ def setting(subject: Subject) -> Iterator[Finding]:
     study = subject.plan.study
     for key, designs in _KEYS_OF.items() if study else ():
         if getattr(study, key) and study is not None and study.design not in designs:
-            message = f"“{key}” means nothing for a {study.design} study."
+            message = f"“{key}” means nothing for {with_article(study.design)} study."
             yield subject.finding(message, f"It belongs to: {list_text(sorted(designs))}.", "study", key)
 
 

@@ -50,7 +50,13 @@ def adjustplan(
 
 def main() -> NoReturn:
     """Run the command line."""
-    from adjustplan.cli import graphs, plans  # noqa: F401 (importing them registers their commands)
+    from adjustplan.cli import (  # noqa: F401 (importing them registers their commands)
+        checking,
+        graphs,
+        plans,
+        registration,
+        starting,
+    )
 
     for stream in (sys.stdout, sys.stderr):
         if hasattr(stream, "reconfigure"):

@@ -20,6 +20,7 @@ from adjustplan.estimate.modelling import estimate_effect
 from adjustplan.estimate.results import AdjustedEstimate, Estimate, Fit
 from adjustplan.estimate.sets import ReportedSet, reported_sets
 from adjustplan.estimate.threads import one_thread
+from adjustplan.identify.showing import with_article
 from adjustplan.plan import Plan
 from adjustplan.study import DESIGNS, Measure
 
@@ -111,7 +112,8 @@ def _refuse_by_design(plan: Plan) -> None:
         return
     design, measure = DESIGNS[plan.study.design], plan.analysis.measure
     if measure not in design.measures:
-        message = f"A {design.name} study cannot estimate a {measure}: {design.refusal}."
+        subject = with_article(f"{design.name} study").capitalize()
+        message = f"{subject} cannot estimate {with_article(measure)}: {design.refusal}."
         allowed = " or ".join(design.measures)
         remedy = f"Estimate the {allowed}." if allowed else "Choose a design with a comparison."
         raise plan.error("analysis-measure-design", message, remedy, ("analysis", "measure"))

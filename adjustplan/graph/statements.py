@@ -133,7 +133,7 @@ def _item(text: str, column: int, complain: Complaint) -> tuple[str, Value] | No
         return "proxy_of", named
     name, equals, value = (part.strip() for part in text.partition("="))
     if equals and name == "wave":
-        if re.fullmatch(r"[+-]?\d+", value):
+        if re.fullmatch(r"[+-]?\d{1,18}", value, re.ASCII):
             return "wave", int(value)
         complain("graph-bad-wave", f"The wave is “{value}”.", "A wave is a whole number: wave=0.", column)
         return None

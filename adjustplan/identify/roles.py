@@ -161,10 +161,10 @@ def collider_path(graph: CausalGraph, place: int, exposure: int, outcome: int) -
     There is one exactly when two ways that share no variable lead from causes of the variable to exposure and to
     outcome, which is a flow of two units (Menger's theorem).
     """
-    import networkx as nx
-
     if len(graph.causes[place]) < 2 or place in (exposure, outcome):
         return None
+    import networkx as nx
+
     skeleton: nx.Graph[Any] = nx.Graph()
     skeleton.add_nodes_from(range(len(graph)))
     for effect, causes in enumerate(graph.causes):

@@ -61,3 +61,8 @@ def list_text(words: Iterable[str], last: str = "and") -> str:
     """Words as a list in a sentence: ``a, b and c``."""
     *rest, final = list(words) or [""]
     return f"{', '.join(rest)} {last} {final}" if rest else final
+
+
+def with_article(words: str) -> str:
+    """Words with the indefinite article: ``an odds ratio``, ``a risk ratio``."""
+    return f"{'an' if words[:1].lower() in 'aeiou' else 'a'} {words}"

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import re
 import tomllib
-from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
@@ -16,6 +15,7 @@ from pydantic_core import ErrorDetails
 from adjustplan.errors import Finding, PlanError, did_you_mean
 from adjustplan.files import read_text
 from adjustplan.graph import CausalGraph, read_graph
+from adjustplan.plan.fitting_together import faults
 from adjustplan.plan.places import Key, line_numbers, line_of
 from adjustplan.plan.schema import Adjustment, Analysis, PlanFile, Question, Study
 from adjustplan.study.consequences import under_design
@@ -112,7 +112,7 @@ def read_plan(path: str | Path) -> Plan:
     ------
     PlanError
         If the file cannot be read, is not TOML, has unknown or missing keys or wrong values, or names variables that
-        the graph lacks; everything found is among its findings, with lines.
+        the graph lacks, or asks what cannot be asked; everything found is among its findings, with lines.
     GraphError
         If the graph cannot be read.
     """
@@ -121,16 +121,21 @@ def read_plan(path: str | Path) -> Plan:
     file = _parse(place, text)
     graph = read_graph(place.parent / file.graph)
     lines = line_numbers(text)
-    if unknown := list(_unknown_variables(place, file, graph, lines)):
-        raise PlanError(unknown)
+    if found := [
+        Finding(fault.code, fault.message, fault.remedy, file=str(place), line=line_of(fault.key, lines))
+        for fault in faults(file, graph)
+    ]:
+        raise PlanError(found)
     return Plan(place, file, graph)
 
 
 def _parse(path: Path, text: str) -> PlanFile:
     try:
         values = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
+    except ValueError as error:  # of a number of thousands of digits too
         raise PlanError(_not_toml(str(error), text, str(path))) from error
+    except RecursionError:
+        raise PlanError(_not_toml("Brackets are nested too deeply", text, str(path))) from None
     try:
         return PlanFile.model_validate(values)
     except ValidationError as error:
@@ -178,27 +183,3 @@ def _model_of(annotation: Any) -> type[BaseModel]:
     if isinstance(annotation, type) and issubclass(annotation, BaseModel):
         return annotation
     return next(_model_of(part) for part in get_args(annotation) if part is not type(None))
-
-
-def _unknown_variables(path: Path, file: PlanFile, graph: CausalGraph, lines: dict[Key, int]) -> Iterator[Finding]:
-    question, adjustment, analysis = file.question, file.adjustment, file.analysis
-    named: list[tuple[Key, str]] = [
-        (("question", "exposure"), question.exposure),
-        (("question", "outcome"), question.outcome),
-        *((("question", "other_exposures"), name) for name in question.other_exposures),
-    ]
-    if file.study:
-        named += [(("study", "matched"), name) for name in file.study.matched]
-        named += [(("study", key), name) for key in ("sampled", "lost") if (name := getattr(file.study, key))]
-    if adjustment:
-        named += [(("adjustment", "set"), name) for name in adjustment.members]
-        for place, alternative in enumerate(adjustment.alternative):
-            named += [(("adjustment", "alternative", place, "set"), name) for name in alternative.members]
-    if analysis:
-        named += [(("analysis", "columns", name), name) for name in analysis.columns]
-        named += [(("analysis", "forms", name), name) for name in analysis.forms]
-    for key, name in named:
-        if name not in graph:
-            message = f"“{name}” in {'.'.join(map(str, key[:2]))} is not a variable of {file.graph}."
-            remedy = did_you_mean(name, graph.numbers, "Add it to the graph or take it out here.")
-            yield Finding("plan-unknown-variable", message, remedy, file=str(path), line=line_of(key, lines))

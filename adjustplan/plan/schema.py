@@ -68,10 +68,10 @@ class Study(Table):
     exposure_begins: Moment | None = Field(None, description="When the exposure can begin: a date or a wave.")
     exposure_known: Moment | None = Field(None, description="When it is settled who counts as exposed.")
     follow_up_begins: Moment | None = Field(None, description="When the outcome begins to count.")
-    size: PositiveInt | None = Field(None, description="Planned number of people (case-control: of cases).")
+    size: PositiveInt | None = Field(None, le=10**10, description="Planned number of people (case-control: of cases).")
     assumed_risk: Share | None = Field(None, description="Assumed risk of the outcome in the reference group.")
     exposed_share: Share | None = Field(None, description="Assumed share of the exposed (case-control: of controls).")
-    controls_per_case: float | None = Field(None, gt=0, description="Case-control: controls for each case.")
+    controls_per_case: float | None = Field(None, gt=0, le=1000, description="Case-control: controls for each case.")
 
 
 class ChosenSet(Table):

@@ -15,9 +15,12 @@ from adjustplan import __version__
 from adjustplan.files import refuse_existing, write_whole
 from adjustplan.identify import Roles, SetList, Verdict, judge, list_sets, roles
 from adjustplan.plan import Plan
+from adjustplan.report.design import design_section
 from adjustplan.report.estimates import estimate_section
-from adjustplan.report.markdown import code, codes, prose, table, text
+from adjustplan.report.history import revision_section, waiver_section
+from adjustplan.report.markdown import code, codes, paths, prose, table, text
 from adjustplan.report.picture import Picture, draw_picture, spoken
+from adjustplan.report.recommendations import recommendations_section
 from adjustplan.study import DESIGNS
 
 if TYPE_CHECKING:
@@ -111,11 +114,15 @@ def compose(material: Material, image: str) -> str:
     sections = [
         f"# {text(material.plan.title)}",
         *_question(material),
+        *design_section(material.plan),
         *_graph(material, image),
         *_variables(material),
         *_sets(material),
         *_choice(material),
         *estimate_section(material.plan, material.fit),
+        *waiver_section(material.plan),
+        *revision_section(material.plan),
+        *recommendations_section(material.plan),
         "## Cautions",
         "\n".join(f"- {caution}" for caution in CAUTIONS),
         f"Made by adjustplan {__version__} from {code(material.plan.path.name)} and {code(material.plan.file.graph)}.",
@@ -171,7 +178,7 @@ def _variables(material: Material) -> Iterator[str]:
             text(role.title) + (f" ({code(role.name)})" if role.title != role.name else ""),
             text(", ".join(role.role_words)),
             f"**{role.advice}**" if role.advice else "–",
-            text(role.reason),
+            paths(role.reason),
         )
         for role in material.roles.variables
     ]
@@ -184,7 +191,7 @@ def _sets(material: Material) -> Iterator[str]:
     found = material.sets
     yield "## Sufficient sets"
     if not found.sets:
-        yield f"**No set of measured variables is sufficient.** {text(found.note)}"
+        yield f"**No set of measured variables is sufficient.** {paths(found.note)}"
         return
     yield (
         "By the back-door criterion, each of these sets blocks every open path that would confound the effect, and no"
@@ -219,8 +226,8 @@ def _verdict(verdict: Verdict) -> Iterator[str]:
         yield "By the graph, the set is **sufficient**."
     else:
         yield "By the graph, the set is **not sufficient**."
-    said = [f"- {code(name)}: {text(reason)}" for name, reason in verdict.reasons.items()]
-    said += [f"- Open: {code(path.text)}. {text(path.reason)}" for path in verdict.open_paths]
+    said = [f"- {code(name)}: {paths(reason)}" for name, reason in verdict.reasons.items()]
+    said += [f"- Open: {paths(path.text)}. {paths(path.reason)}" for path in verdict.open_paths]
     if not verdict.complete:
         said.append("- There are more open paths than these.")
     if said:

@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from typing import TYPE_CHECKING
 
 from adjustplan.plan import Plan
+from adjustplan.report.design import estimate_prefix
 from adjustplan.report.markdown import code, codes, table, text
 from adjustplan.report.numbers import figure, interval
 
@@ -27,12 +28,14 @@ def estimate_section(plan: Plan, fit: Fit | None) -> Iterator[str]:
         yield "The plan names no set or no data yet, so nothing is estimated."
         return
     planned = fit.adjusted[0]
-    yield _headline(fit, planned)
+    prefix = estimate_prefix(plan)
+    yield f"{prefix}{_headline(fit, planned)}"
     rows = [
         (codes(result.members), text(_origins(result)), str(result.rows), *map(interval, (result.crude, result)))
         for result in fit.adjusted
     ]
-    heads = ("Adjusted for", "Which set", "Rows", f"Crude {fit.measure}", f"Adjusted {fit.measure}")
+    between = " between groups" if prefix else ""
+    heads = ("Adjusted for", "Which set", "Rows", f"Crude {fit.measure}{between}", f"Adjusted {fit.measure}{between}")
     yield table(heads, rows, right=(2,))
     yield (
         f"95 % confidence intervals, from {_MODELS[fit.measure]} with {_VARIANCES[fit.variance]}. In each line the"

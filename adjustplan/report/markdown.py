@@ -27,6 +27,11 @@ def prose(words: str) -> str:
     return "\n\n".join(text(part) for part in re.split(r"\n\s*\n", words.strip()))
 
 
+def paths(words: str) -> str:
+    """Plain text with paths in it, whose arrows are set as arrows, which do not break at the end of a line."""
+    return text(words.replace(" -> ", " → ").replace(" <- ", " ← "))
+
+
 def code(words: str) -> str:
     """A name or a path, set as code; a bar is escaped, so that it can stand in a table."""
     line = " ".join(words.split())

@@ -5,12 +5,10 @@ from __future__ import annotations
 import os
 import subprocess
 import sys
-from collections.abc import Callable
 from pathlib import Path
 
 import pytest
-
-Run = Callable[..., subprocess.CompletedProcess[str]]
+from program import Run
 
 GRAPH = """\
 age, site -> night_work

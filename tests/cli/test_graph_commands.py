@@ -7,7 +7,7 @@ import sys
 from pathlib import Path
 
 import pytest
-from conftest import Run
+from program import Run
 
 QUESTION = ("-x", "night_work", "-y", "diabetes")
 

@@ -7,7 +7,7 @@ import shutil
 from pathlib import Path
 
 import pytest
-from conftest import Run
+from program import Run
 
 EXAMPLE = Path(__file__).resolve().parents[2] / "examples" / "night_work"
 

@@ -123,7 +123,7 @@ def test_the_limit_is_kept_and_said(write_plan):
 
 
 def test_the_exposure_cannot_be_adjusted_for(write_plan):
-    with pytest.raises(PlanError, match="contains the exposure"):
+    with pytest.raises(PlanError, match="is the exposure"):
         fit(write_plan(people(), edges=TWO_WAYS, members=("night_work",)))
 
 

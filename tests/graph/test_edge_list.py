@@ -80,6 +80,7 @@ def test_a_byte_order_mark_is_left_out(tmp_path) -> None:
         ("a -> b\na: wave=2\nb: wave=1", 1, 6, "back in time"),
         ("a -> b\na: unmesured", 2, 4, "Did you mean “unmeasured”?"),
         ("a -> b\na: wave=1.5", 2, 4, "whole number"),
+        ("a -> b\na: wave=" + "9" * 5000, 2, 4, "whole number"),
         ("a -> b\na: cost=-1", 2, 4, "0 or more"),
         ("a -> b\na: cost=inf", 2, 4, "finite"),
         ("a -> b\na: cost=nan", 2, 4, "finite"),

@@ -92,7 +92,7 @@ def test_an_insufficient_set_is_called_that_with_its_open_path(study: Path) -> N
     plan.write_text(plan.read_text().replace('["age", "depot"]', '["age", "sick_leave"]', 1))
     told = write(study)
     assert "is **not sufficient**" in told
-    assert "night_work <- depot -> canteen -> diabetes" in told
+    assert "night_work ← depot → canteen → diabetes" in told
     assert "holding it fixed distorts the effect" in told
 
 
@@ -107,7 +107,7 @@ def test_when_no_set_is_sufficient_the_document_says_why(study: Path) -> None:
     graph.write_text(graph.read_text() + "chronotype -> diabetes\n")
     told = write(study)
     assert "No set of measured variables is sufficient" in told
-    assert "night_work <- chronotype -> diabetes" in told
+    assert "night_work ← chronotype → diabetes" in told
 
 
 def test_words_of_the_plan_come_out_as_text(study: Path) -> None:
