@@ -14,6 +14,24 @@ from adjustplan.study.consequences import unproven_arrows
 
 
 @rule(
+    "study-order",
+    "error",
+    finds="A cohort or trial whose graph lets the outcome cause the exposure.",
+    matters="The design itself puts the exposure first, so either the graph is wrong or the exposure is not the one"
+    " that was there at the start.",
+    mend="Give the earlier and the later value of the outcome each a name, or turn the arrow.",
+    source="Rothman, Greenland and Lash 2008, Modern Epidemiology, 3rd ed., chapter 7.",
+)
+def order(subject: Subject) -> Iterator[Finding]:
+    graph = subject.plan.graph
+    if subject.design and subject.design.exposure_first:
+        path = directed_path(graph, graph.number(subject.outcome), graph.number(subject.exposure))
+        if path:
+            message = f"By the design the exposure comes first, but the graph says {path}."
+            yield subject.in_graph(message, "Name earlier and later values apart, or turn the arrow.")
+
+
+@rule(
     "study-reverse-causation",
     "warning",
     finds="Arrows of a cross-sectional study on which the effect rests and whose direction no wave shows.",

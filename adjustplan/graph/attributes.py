@@ -2,11 +2,33 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+import warnings
+from collections.abc import Iterable, Mapping
 from typing import Any
 
-from adjustplan.errors import Finding, GraphError
-from adjustplan.graph.model import Variable
+from adjustplan.errors import AdjustplanWarning, Finding, GraphError
+from adjustplan.graph.model import Arrow, CausalGraph, Variable
+
+
+def assemble(
+    described: Iterable[tuple[str, Mapping[str, Any]]], arrows: Iterable[Arrow], ignored: set[str], file: str | None
+) -> CausalGraph:
+    """The graph of what a foreign format describes; attributes that mean nothing here are named in a warning.
+
+    Raises
+    ------
+    GraphError
+        If an attribute has a value that it cannot have, or the graph is no causal graph; its findings name the file.
+    """
+    try:
+        graph = CausalGraph(arrows, [read_variable(name, data, ignored) for name, data in described])
+    except GraphError as error:
+        raise GraphError(finding.at(file) for finding in error.findings) if file else error from None
+    if ignored:
+        message = f"Attributes without a meaning here are left out: {', '.join(sorted(ignored))}."
+        warnings.warn(f"{file}: {message}" if file else message, AdjustplanWarning, stacklevel=4)
+    return graph
+
 
 _FLAGS = {"true": True, "1": True, "yes": True, "false": False, "0": False, "no": False, "": False}
 

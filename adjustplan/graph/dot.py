@@ -9,13 +9,12 @@ from __future__ import annotations
 import contextlib
 import io
 import re
-import warnings
 from collections.abc import Iterator, Mapping
 from itertools import product
 from typing import Any
 
-from adjustplan.errors import AdjustplanWarning, Finding, GraphError
-from adjustplan.graph.attributes import read_variable
+from adjustplan.errors import Finding, GraphError
+from adjustplan.graph.attributes import assemble
 from adjustplan.graph.model import Arrow, CausalGraph, attributes
 
 _DEFAULTS = ("node", "edge", "graph")
@@ -46,15 +45,7 @@ def parse_dot(text: str, file: str | None = None) -> CausalGraph:
                 if (cause, effect) in arrows and not root.get_strict():
                     doubled.append(arrow)
                 arrows.setdefault((cause, effect), arrow)
-    try:
-        variables = [read_variable(name, told, ignored) for name, told in described.items()]
-        graph = CausalGraph([*arrows.values(), *doubled], variables)
-    except GraphError as error:
-        raise GraphError(finding.at(file) for finding in error.findings) if file else error from None
-    if ignored:
-        message = f"{file or 'DOT'}: attributes without a meaning here are left out: {', '.join(sorted(ignored))}."
-        warnings.warn(message, AdjustplanWarning, stacklevel=3)
-    return graph
+    return assemble(described.items(), [*arrows.values(), *doubled], ignored, file)
 
 
 def format_dot(graph: CausalGraph) -> str:

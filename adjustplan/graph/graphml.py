@@ -2,11 +2,10 @@
 
 from __future__ import annotations
 
-import warnings
 from typing import Any
 
-from adjustplan.errors import AdjustplanWarning, Finding, GraphError
-from adjustplan.graph.attributes import read_variable
+from adjustplan.errors import Finding, GraphError
+from adjustplan.graph.attributes import assemble
 from adjustplan.graph.model import Arrow, CausalGraph
 
 
@@ -24,19 +23,11 @@ def parse_graphml(text: str, file: str | None = None) -> CausalGraph:
         remedy = "A causal graph has arrows: set edgedefault to directed."
         raise GraphError(Finding("graph-undirected", message, remedy, file=file))
     ignored: set[str] = set()
-    try:
-        variables = [read_variable(str(node), data, ignored) for node, data in graph.nodes(data=True)]
-        arrows = []
-        for cause, effect, data in graph.edges(data=True):
-            arrows.append(Arrow(str(cause), str(effect), str(data.get("reason", ""))))
-            ignored |= set(data) - {"reason", "id"}
-        result = CausalGraph(arrows, variables)
-    except GraphError as error:
-        raise GraphError(finding.at(file) for finding in error.findings) if file else error from None
-    if ignored:
-        message = f"{file or 'GraphML'}: attributes without a meaning here are left out: {', '.join(sorted(ignored))}."
-        warnings.warn(message, AdjustplanWarning, stacklevel=3)
-    return result
+    arrows = []
+    for cause, effect, data in graph.edges(data=True):
+        arrows.append(Arrow(str(cause), str(effect), str(data.get("reason", ""))))
+        ignored |= set(data) - {"reason", "id"}
+    return assemble(((str(node), data) for node, data in graph.nodes(data=True)), arrows, ignored, file)
 
 
 def format_graphml(graph: CausalGraph) -> str:

@@ -44,6 +44,17 @@ TRIGGERS: list[tuple[str, str, Change, Change]] = [
         {},
         {"quiet_room: wave=1\nmood: wave=2\ncough: wave=3": "quiet_room: wave=1\nmood: wave=1\ncough: wave=1"},
     ),
+    (
+        "study-order",
+        "cohort",
+        {},
+        {
+            "quiet_room -> mood -> cough : less strain": "mood -> cough : strain",
+            "quiet_room, cough -> visits : both bring people to the nurse": "cough -> quiet_room : coughers ask",
+            "mood, family -> stays": "family -> stays",
+            "quiet_room: wave=1\nmood: wave=2\ncough: wave=3\nvisits: wave=4\n": "",
+        },
+    ),
     ("study-losses", "cohort", {'lost = "followed"\n': ""}, {}),
     ("study-lost-free", "cohort", {}, {"followed: restricted\n": ""}),
     ("study-selection", "cohort", {}, {"site -> followed": "quiet_room, family -> followed"}),
