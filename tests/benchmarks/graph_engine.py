@@ -35,7 +35,9 @@ def main() -> None:
     sizes = [10**3, 10**4, 10**5, 10**6]
     options.add_argument("--edges", type=int, nargs="*", default=sizes, help="sizes of the graphs")
     options.add_argument("--sets", type=int, nargs="*", default=[10, 10**3, 10**5], help="lengths of the lists")
-    options.add_argument("--limit", type=float, default=30.0, help="seconds after which the rival is stopped (its memory grows too)")
+    options.add_argument(
+        "--limit", type=float, default=30.0, help="seconds after which the rival is stopped (its memory grows too)"
+    )
     asked = options.parse_args()
     for engine in ("small", "large"):  # so that no import is timed
         identify.is_sufficient(ladder(1), "exposure", "outcome", (), engine=engine)
