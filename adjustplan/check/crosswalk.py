@@ -65,7 +65,7 @@ def _diagram(subject: Subject) -> Answer:
 
 def _unmeasured(subject: Subject) -> Answer:
     hidden = sum(variable.unmeasured for variable in subject.plan.graph)
-    return "not checkable", f"The graph holds {hidden} unmeasured variables.", ("graph",)
+    return "not checkable", f"Unmeasured variables in the graph: {hidden}.", ("graph",)
 
 
 def _direction(subject: Subject) -> Answer:

@@ -106,7 +106,11 @@ def relative_uri(file: str) -> str:
         path = os.path.relpath(file)
     except ValueError:
         return Path(file).as_uri()
-    return quote(os.fsencode(Path(path).as_posix()))
+    name = Path(path).as_posix()
+    try:
+        return quote(os.fsencode(name))
+    except UnicodeEncodeError:  # no file on this system can have such a name
+        return quote(name.encode("utf-8", "replace"))
 
 
 def _fingerprint(finding: Finding) -> str:
