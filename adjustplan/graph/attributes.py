@@ -7,7 +7,8 @@ from collections.abc import Iterable, Mapping
 from typing import Any
 
 from adjustplan.errors import AdjustplanWarning, Finding, GraphError
-from adjustplan.graph.model import Arrow, CausalGraph, Variable
+from adjustplan.graph.elements import Arrow, Variable
+from adjustplan.graph.model import CausalGraph
 
 
 def assemble(

@@ -15,7 +15,8 @@ from typing import Any
 
 from adjustplan.errors import Finding, GraphError
 from adjustplan.graph.attributes import assemble
-from adjustplan.graph.model import Arrow, CausalGraph, attributes
+from adjustplan.graph.elements import Arrow, attributes
+from adjustplan.graph.model import CausalGraph
 
 _DEFAULTS = ("node", "edge", "graph")
 _ESCAPE = re.compile(r"\\(.)", re.DOTALL)

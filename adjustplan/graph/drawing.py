@@ -22,7 +22,8 @@ from typing import Any, Literal
 
 from adjustplan.errors import Finding, OutputError
 from adjustplan.graph.dot import quoted
-from adjustplan.graph.model import CausalGraph, Variable
+from adjustplan.graph.elements import Variable
+from adjustplan.graph.model import CausalGraph
 
 PictureFormat = Literal["svg", "png"]
 

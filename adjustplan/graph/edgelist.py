@@ -22,7 +22,9 @@ from pathlib import Path
 
 from adjustplan.errors import AdjustplanWarning, Finding, GraphError, nearest
 from adjustplan.files import read_text
-from adjustplan.graph.model import Arrow, CausalGraph, Fault, Variable, attributes, faults
+from adjustplan.graph.elements import Arrow, Variable, attributes
+from adjustplan.graph.faults import Fault, faults
+from adjustplan.graph.model import CausalGraph
 from adjustplan.graph.statements import ArrowLine, Value, VariableLine, parse_line
 from adjustplan.graph.words import Line, is_quoted, quote, split_line, without_comment, written_name
 

@@ -14,7 +14,8 @@ from types import MappingProxyType
 from adjustplan.errors import AdjustplanWarning, Finding, GraphError, did_you_mean
 from adjustplan.files import read_text, write_whole
 from adjustplan.graph import dot, edgelist, graphml, pairs
-from adjustplan.graph.model import CausalGraph, attributes
+from adjustplan.graph.elements import attributes
+from adjustplan.graph.model import CausalGraph
 
 
 @dataclass(frozen=True, slots=True)

@@ -6,7 +6,8 @@ from typing import Any
 
 from adjustplan.errors import Finding, GraphError
 from adjustplan.graph.attributes import assemble
-from adjustplan.graph.model import Arrow, CausalGraph
+from adjustplan.graph.elements import Arrow
+from adjustplan.graph.model import CausalGraph
 
 
 def parse_graphml(text: str, file: str | None = None) -> CausalGraph:

@@ -1,89 +1,18 @@
-"""The causal graph: variables, and arrows from causes to their effects.
-
-An arrow from A to B says: were A set to another value, with everything else that causes B held where it is, B could
-change. Just as much is said by every arrow that is *not* drawn. Arrows never run in a circle, so nothing causes
-itself, and never point back in time. A variable may be
-
-* ``unmeasured``: it is part of the story but not of the data, so it can never be adjusted for;
-* ``restricted``: how people came into the data holds it fixed (selection, restriction, loss to follow-up), so it is
-  conditioned on whether one likes it or not.
-
-The rules above are checked once, here, whichever format a graph came from: :func:`faults` lists what breaks them.
-"""
+"""The causal graph itself: its variables and arrows, and who is next to whom."""
 
 from __future__ import annotations
 
-import graphlib
-import math
 from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 from adjustplan.errors import Finding, GraphError, QuestionError, did_you_mean
+from adjustplan.graph.elements import Arrow, Variable, attributes
+from adjustplan.graph.faults import faults
 
 if TYPE_CHECKING:
     import networkx as nx
-
-
-@dataclass(frozen=True, slots=True)
-class Variable:
-    """One variable of a causal graph.
-
-    Attributes
-    ----------
-    name : str
-        The word the graph, the plan and the commands know it by.
-    label : str
-        How documents and pictures call it; empty: by its name.
-    unmeasured, restricted : bool
-        See the head of this module; not both.
-    wave : int, optional
-        When it is measured; an arrow never points to an earlier wave.
-    cost : float
-        What measuring it costs, in any unit that is the same for all; finite, 0 or more.
-    proxy_of : str
-        The variable that it is an imperfect measurement of; empty where it is none.
-    """
-
-    name: str
-    label: str = ""
-    unmeasured: bool = False
-    restricted: bool = False
-    wave: int | None = None
-    cost: float = 1.0
-    proxy_of: str = ""
-
-    @property
-    def title(self) -> str:
-        """The label, or the name where there is none."""
-        return self.label or self.name
-
-
-@dataclass(frozen=True, slots=True)
-class Arrow:
-    """A direct cause and its effect, with the reason the team gives for it (empty: none given)."""
-
-    cause: str
-    effect: str
-    reason: str = ""
-
-    def __str__(self) -> str:
-        return f"{self.cause} -> {self.effect}"
-
-
-@dataclass(frozen=True, slots=True)
-class Fault:
-    """A broken rule of the model and what broke it, so that a reader of files can say where it stands."""
-
-    code: str
-    message: str
-    remedy: str
-    subject: Arrow | Variable | None = None
-
-    def finding(self) -> Finding:
-        """The fault as a finding without a place."""
-        return Finding(self.code, self.message, self.remedy)
 
 
 @dataclass(frozen=True, eq=False)
@@ -225,90 +154,3 @@ class CausalGraph:
     @cached_property
     def _arrows_by_ends(self) -> dict[tuple[str, str], Arrow]:
         return {(arrow.cause, arrow.effect): arrow for arrow in self.arrows}
-
-
-def attributes(variable: Variable) -> dict[str, str | bool | int | float]:
-    """What is said of a variable beyond its name, by attribute, defaults left out."""
-    told: dict[str, str | bool | int | float] = {}
-    if variable.label:
-        told["label"] = variable.label
-    if variable.unmeasured:
-        told["unmeasured"] = True
-    if variable.restricted:
-        told["restricted"] = True
-    if variable.wave is not None:
-        told["wave"] = variable.wave
-    if variable.cost != 1.0:
-        told["cost"] = variable.cost
-    if variable.proxy_of:
-        told["proxy_of"] = variable.proxy_of
-    return told
-
-
-def faults(variables: Iterable[Variable], arrows: Iterable[Arrow]) -> Iterator[Fault]:
-    """Everything in which these variables and arrows fail to be a causal graph. Time is linear in their number."""
-    by_name: dict[str, Variable] = {}
-    for variable in variables:
-        yield from _variable_faults(variable)
-        if variable.name in by_name:
-            yield Fault("graph-variable-twice", f"“{variable.name}” is described twice.", "Keep one.", variable)
-        by_name.setdefault(variable.name, variable)
-    yield from _proxy_faults(by_name)
-    if not by_name:
-        yield Fault("graph-empty", "The graph has no variables.", "Write at least one arrow: cause -> effect.")
-    drawn: set[tuple[str, str]] = set()
-    causes: dict[str, list[str]] = {}
-    for arrow in arrows:
-        ends = (arrow.cause, arrow.effect)
-        if arrow.cause == arrow.effect:
-            message = f"“{arrow.cause}” has an arrow to itself."
-            remedy = "A variable does not cause itself; give its earlier and its later value each a name."
-            yield Fault("graph-self-arrow", message, remedy, arrow)
-            continue
-        if ends in drawn:
-            yield Fault("graph-arrow-twice", f"The arrow {arrow} is there twice.", "Delete one.", arrow)
-            continue
-        drawn.add(ends)
-        causes.setdefault(arrow.effect, []).append(arrow.cause)
-        first, second = by_name[arrow.cause].wave, by_name[arrow.effect].wave
-        if first is not None and second is not None and first > second:
-            message = (
-                f"The arrow {arrow} points back in time: “{arrow.cause}” is of wave {first}, "
-                f"“{arrow.effect}” of wave {second}."
-            )
-            yield Fault("graph-back-in-time", message, "Turn the arrow round or mend the waves.", arrow)
-    yield from _cycle_fault(list(by_name), causes)
-
-
-def _variable_faults(variable: Variable) -> Iterator[Fault]:
-    if not variable.name.strip():
-        yield Fault("graph-empty-name", "A variable has an empty name.", "Give it a name.", variable)
-    if variable.unmeasured and variable.restricted:
-        message = f"“{variable.name}” is both unmeasured and restricted."
-        remedy = "Restricted means held fixed in the data; keep the one that is true."
-        yield Fault("graph-unmeasured-restricted", message, remedy, variable)
-    if not math.isfinite(variable.cost) or variable.cost < 0:
-        message = f"The cost of “{variable.name}” is {variable.cost}."
-        yield Fault("graph-bad-cost", message, "A cost is a finite number, 0 or more.", variable)
-
-
-def _proxy_faults(by_name: Mapping[str, Variable]) -> Iterator[Fault]:
-    for variable in by_name.values():
-        true = variable.proxy_of
-        if true and true == variable.name:
-            yield Fault("graph-bad-proxy", f"“{true}” is a proxy of itself.", "Name what it measures.", variable)
-        elif true and true not in by_name:
-            message = f"“{variable.name}” is a proxy of “{true}”, which is not in the graph."
-            yield Fault("graph-bad-proxy", message, did_you_mean(true, by_name, f"Draw “{true}”."), variable)
-
-
-def _cycle_fault(names: list[str], causes: Mapping[str, list[str]]) -> Iterator[Fault]:
-    try:
-        graphlib.TopologicalSorter(causes).prepare()
-    except graphlib.CycleError as error:
-        circle: list[str] = error.args[1][:-1]
-        first = min(range(len(circle)), key=lambda place: names.index(circle[place]))
-        cycle = circle[first:] + circle[: first + 1]
-        shown = " -> ".join(cycle)
-        remedy = "Delete or turn one of its arrows, or split a variable by time (two waves, two names)."
-        yield Fault("graph-cycle", f"The arrows run in a circle: {shown}.", remedy, Arrow(cycle[0], cycle[1]))

@@ -10,7 +10,9 @@ import io
 import warnings
 
 from adjustplan.errors import AdjustplanWarning, Finding, GraphError
-from adjustplan.graph.model import Arrow, CausalGraph, Variable, faults
+from adjustplan.graph.elements import Arrow, Variable
+from adjustplan.graph.faults import faults
+from adjustplan.graph.model import CausalGraph
 
 _HEADER = ["cause", "effect"]
 

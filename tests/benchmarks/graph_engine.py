@@ -24,7 +24,7 @@ from graph_clock import Timing, limited, median, once, peak_memory, ratio, show
 from graph_problems import Problem, deep_graph, ladder, random_graph
 
 from adjustplan import identify
-from adjustplan.graph.model import CausalGraph
+from adjustplan.graph import CausalGraph
 
 Times = dict[str, list[tuple[int, float]]]
 GIVEN_UP: set[tuple[str, str]] = set()  # kinds of graph and of work on which the rival was stopped

@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 
 import networkx as nx
 
-from adjustplan.graph.model import CausalGraph
+from adjustplan.graph import CausalGraph
 
 
 @dataclass

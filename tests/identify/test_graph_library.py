@@ -10,8 +10,7 @@ import pytest
 from truth.brute_force import Question
 
 from adjustplan import identify
-from adjustplan.graph import read_graph
-from adjustplan.graph.model import CausalGraph
+from adjustplan.graph import CausalGraph, read_graph
 
 LIBRARY = Path(__file__).resolve().parents[2] / "graphs"
 FILES = sorted(LIBRARY.glob("*.edges"))

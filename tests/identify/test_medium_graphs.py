@@ -15,7 +15,7 @@ import pytest
 from truth.drawn_graphs import random_graph
 
 from adjustplan import identify
-from adjustplan.graph.model import CausalGraph
+from adjustplan.graph import CausalGraph
 
 ENGINES = ("small", "large")
 CASES = [

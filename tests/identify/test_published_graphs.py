@@ -13,7 +13,7 @@ import pytest
 from truth.brute_force import Question
 
 from adjustplan import identify
-from adjustplan.graph.model import CausalGraph, Variable
+from adjustplan.graph import CausalGraph, Variable
 
 
 def sets(*members: str) -> list[frozenset[str]]:

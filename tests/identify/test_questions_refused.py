@@ -8,7 +8,7 @@ import pytest
 
 from adjustplan import identify
 from adjustplan.errors import QuestionError
-from adjustplan.graph.model import CausalGraph, Variable
+from adjustplan.graph import CausalGraph, Variable
 
 ARROWS = [("age", "diet"), ("age", "gout"), ("diet", "gout"), ("diet", "visit"), ("gout", "visit")]
 GRAPH = CausalGraph(ARROWS, [Variable("visit", restricted=True)])

@@ -13,7 +13,7 @@ from truth.brute_force import Question
 from truth.drawn_graphs import questions
 
 from adjustplan import identify
-from adjustplan.graph.model import CausalGraph, Variable
+from adjustplan.graph import CausalGraph, Variable
 
 ENGINES = ("small", "large")
 MANY = settings(max_examples=200, deadline=None, derandomize=True, print_blob=False)

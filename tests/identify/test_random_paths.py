@@ -10,7 +10,7 @@ from truth.brute_force import Question
 from truth.drawn_graphs import questions
 
 from adjustplan import identify
-from adjustplan.graph.model import CausalGraph
+from adjustplan.graph import CausalGraph
 
 MANY = settings(max_examples=200, deadline=None, derandomize=True, print_blob=False)
 

@@ -20,7 +20,7 @@ from collections.abc import Iterable
 from functools import cached_property
 from itertools import combinations
 
-from adjustplan.graph.model import CausalGraph
+from adjustplan.graph import CausalGraph
 from truth.walks import Arrows, Name, Walk
 
 

@@ -15,7 +15,7 @@ from itertools import combinations, permutations, product
 import networkx as nx
 from hypothesis import strategies as st
 
-from adjustplan.graph.model import CausalGraph, Variable
+from adjustplan.graph import CausalGraph, Variable
 from truth.brute_force import Question
 
 
