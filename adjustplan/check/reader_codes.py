@@ -16,6 +16,9 @@ READER_CODES: Mapping[str, str] = MappingProxyType(
         " names it. Mend the path, or make the file readable.",
         "graph-not-utf8": "A byte of the graph file is not UTF-8, so letters in it cannot be told for certain. Save"
         " the file as UTF-8.",
+        "graph-unwritable": "A name, label or reason holds signs that the format to be written cannot carry: line"
+        " breaks, control signs, or in CSV spaces around a name. Another program would read something else, or"
+        " nothing. Write an edge list, which carries everything, or take the signs out.",
         "graph-unknown-format": "The file's ending says in which format a graph is, and this ending names none. An"
         " edge list ends in .edges; DOT, GraphML and two-column CSV are read too.",
         "graph-syntax": "A line or mark is not of the format. In an edge list a line is either arrows (cause ->"

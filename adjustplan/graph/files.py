@@ -5,6 +5,7 @@ The edge list carries everything. What another format cannot carry is said in a 
 
 from __future__ import annotations
 
+import unicodedata
 import warnings
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
@@ -65,7 +66,14 @@ def read_graph(path: str | Path) -> CausalGraph:
 
 
 def write_graph(graph: CausalGraph, path: str | Path, *, force: bool = False) -> None:
-    """Write a causal graph in the format that the file's ending names; OutputError where the file exists already.
+    """Write a causal graph in the format that the file's ending names.
+
+    Raises
+    ------
+    OutputError
+        If the file exists already and ``force`` is not set.
+    GraphError
+        If the ending names no format, or the format cannot carry a sign in some text.
 
     Warns
     -----
@@ -73,11 +81,26 @@ def write_graph(graph: CausalGraph, path: str | Path, *, force: bool = False) ->
         If the format cannot carry all of the graph, with what is left out.
     """
     known = format_of(path)
+    if known.write is not edgelist.format_edge_list:
+        _refuse_control_signs(graph, path, known)
     text = known.write(graph)
     write_whole(path, text, force=force)
     if lost := [] if known.carries_all else left_out(graph):
         message = f"{path}: {known.title} carries arrows only; left out: {'; '.join(lost)}."
         warnings.warn(message, AdjustplanWarning, stacklevel=2)
+
+
+def _refuse_control_signs(graph: CausalGraph, path: str | Path, known: Format) -> None:
+    """Control signs and unassigned ones come back altered from other formats, or make the file unreadable."""
+    told = [variable.name for variable in graph]
+    if known.carries_all:
+        told += [variable.label for variable in graph] + [arrow.reason for arrow in graph.arrows]
+    for text in told:
+        trimmed = not known.carries_all and text != text.strip()
+        if trimmed or any(unicodedata.category(letter) in ("Cc", "Cs", "Cn") for letter in text):
+            message = f"{known.title} cannot carry the signs in {text!r}."
+            remedy = "Write an edge list (.edges), or take out line breaks and control signs."
+            raise GraphError(Finding("graph-unwritable", message, remedy, file=str(path)))
 
 
 def left_out(graph: CausalGraph) -> list[str]:

@@ -37,6 +37,40 @@ def test_dot_gives_back_any_graph_without_control_characters(graph: CausalGraph)
         assert parse_dot(format_dot(graph)) == graph
 
 
+@pytest.mark.parametrize("ending", [".dot", ".graphml", ".csv"])
+@pytest.mark.parametrize("sign", ["\x01", "\n", "\r", "\ufffe"])
+def test_signs_that_a_format_cannot_carry_are_refused(tmp_path, ending: str, sign: str) -> None:
+    graphs = [CausalGraph([(f"a{sign}b", "c")])]
+    if ending != ".csv":  # which leaves out reasons and labels, and says so
+        graphs += [CausalGraph([("a", "c", f"why{sign}not")]), CausalGraph([("a", "c")], [Variable("a", f"x{sign}y")])]
+    for graph in graphs:
+        with pytest.raises(GraphError, match="cannot carry"):
+            write_graph(graph, tmp_path / f"g{ending}")
+        assert not (tmp_path / f"g{ending}").exists()
+        write_graph(graph, tmp_path / "g.edges", force=True)
+        assert read_graph(tmp_path / "g.edges") == graph
+
+
+def test_csv_refuses_a_name_whose_spaces_it_would_lose(tmp_path) -> None:
+    with pytest.raises(GraphError, match="cannot carry"):
+        write_graph(CausalGraph([(" a", "b")]), tmp_path / "g.csv")
+
+
+@settings(max_examples=60, deadline=None)
+@given(graphs())
+def test_every_full_format_gives_back_any_graph_it_does_not_refuse(tmp_path_factory, graph: CausalGraph) -> None:
+    folder = tmp_path_factory.mktemp("formats")
+    refused = 0
+    for ending in (".dot", ".graphml"):
+        try:
+            write_graph(graph, folder / f"g{ending}")
+        except GraphError:
+            refused += 1
+        else:
+            assert read_graph(folder / f"g{ending}") == graph
+    assert refused in (0, 2)
+
+
 def test_csv_gives_back_the_arrows_and_says_what_it_leaves_out(tmp_path) -> None:
     with pytest.warns(AdjustplanWarning, match="left out") as said:
         write_graph(FULL, tmp_path / "g.csv")
