@@ -177,6 +177,7 @@ def draw(
         typer.Option("--output", "-o", metavar="FILE", help="An .svg, .png or .dot file; without it, DOT to stdout."),
     ] = None,
     force: Force = False,
+    form: Format = OutputFormat.text,
 ) -> None:
     """Draw the graph as SVG, PNG or DOT.
 
@@ -193,11 +194,13 @@ def draw(
         asked = ask(subject, exposure, outcome, effect)
         held = members or asked.planned or ()
         picture = draw_picture(asked.graph, roles_of(*asked.question, asked.effect), held)
-    if output is None:
-        typer.echo(picture.dot, nl=False)
-    else:
+    if output is not None:
         picture.save(output, force=force)
-        typer.echo(f"wrote {output}", err=True)
+        terminal.show_written([output], form.value)
+    elif form is OutputFormat.json:
+        terminal.print_json({"dot": picture.dot})
+    else:
+        typer.echo(picture.dot, nl=False)
 
 
 @app.command()
@@ -209,6 +212,7 @@ def convert(
         Path, typer.Argument(metavar="TARGET", help="The file to write, in the format its ending names.")
     ],
     force: Force = False,
+    form: Format = OutputFormat.text,
 ) -> None:
     """Convert a graph to another format.
 
@@ -218,4 +222,4 @@ def convert(
     adjustplan convert night_work.edges night_work.graphml
     """
     write_graph(read_graph(source), target, force=force)
-    typer.echo(f"wrote {target}", err=True)
+    terminal.show_written([target], form.value)

@@ -40,6 +40,7 @@ def write(
     output: Annotated[Path, typer.Option("--output", "-o", metavar="DIR", help="The folder to write into.")],
     limit: Limit = 20,
     force: Force = False,
+    form: Format = OutputFormat.text,
 ) -> None:
     """Write the document that defends the adjustment.
 
@@ -51,5 +52,4 @@ def write(
     """
     from adjustplan.report import write_document
 
-    for path in write_document(read_plan(plan), output, limit=limit, force=force):
-        typer.echo(f"wrote {path}", err=True)
+    terminal.show_written(write_document(read_plan(plan), output, limit=limit, force=force), form.value)

@@ -9,9 +9,11 @@ from typing import Annotated
 import typer
 
 from adjustplan.cli.app import app
+from adjustplan.cli.arguments import Format, OutputFormat
 from adjustplan.errors import Finding, PlanError, did_you_mean
 from adjustplan.plan.starting import NewStudy, refuse_started
 from adjustplan.plan.starting import start as start_study
+from adjustplan.report import terminal
 from adjustplan.study import DESIGNS, MEASURES
 
 _NEEDED = ("title", "exposure", "outcome", "design")
@@ -29,6 +31,7 @@ def start(
         list[str] | None,
         typer.Option("--covariate", metavar="NAME", help="A common cause of exposure and outcome; may be repeated."),
     ] = None,
+    form: Format = OutputFormat.text,
 ) -> None:
     """Start a study: a commented graph and plan to go on from.
 
@@ -47,8 +50,8 @@ def start(
         raise PlanError(Finding("start-missing", f"There is no terminal to ask on; not given: {absent}.", "Add it."))
     told = {name: value if value is not None else _ask(name) for name, value in given.items()}
     covariates = tuple(covariate or (_ask_covariates() if asking else ()))
-    for path in start_study(folder, NewStudy(**told, measure=measure, covariates=covariates)):
-        typer.echo(f"wrote {path}", err=True)
+    written = start_study(folder, NewStudy(**told, measure=measure, covariates=covariates))
+    terminal.show_written(written, form.value)
 
 
 def _ask(name: str) -> str:

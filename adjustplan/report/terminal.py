@@ -9,6 +9,7 @@ import json
 import sys
 from collections.abc import Iterable, Sequence
 from functools import singledispatch
+from pathlib import Path
 from typing import Any, Literal, Protocol
 
 from rich.console import Console
@@ -35,6 +36,15 @@ def show(result: Result, form: Form) -> None:
         print_json(result.to_dict())
     else:
         print_text(result)
+
+
+def show_written(paths: Iterable[Path], form: Form) -> None:
+    """Say which files were written: to a reader on stderr, to a program on stdout."""
+    if form == "json":
+        print_json({"written": [str(path) for path in paths]})
+        return
+    for path in paths:
+        print(f"wrote {path}", file=sys.stderr)
 
 
 def print_json(values: dict[str, Any]) -> None:

@@ -108,6 +108,14 @@ def test_draw_writes_a_picture_and_keeps_an_existing_one(run: Run, folder: Path)
     assert "digraph" in run("draw", "g.edges").stdout
 
 
+def test_what_is_written_is_told_to_programs_as_json(run: Run) -> None:
+    done = run("convert", "g.edges", "g.dot", "--format", "json")
+    assert (json.loads(done.stdout), done.stderr) == ({"written": ["g.dot"]}, "")
+    done = run("draw", "g.edges", "-o", "g.png", "--format", "json")
+    assert json.loads(done.stdout) == {"written": ["g.png"]}
+    assert json.loads(run("draw", "g.edges", "--format", "json").stdout)["dot"].startswith("digraph")
+
+
 def test_convert_goes_there_and_back(run: Run) -> None:
     assert run("convert", "g.edges", "g.graphml").returncode == 0
     assert run("convert", "g.graphml", "back.edges").returncode == 0
