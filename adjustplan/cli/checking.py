@@ -42,7 +42,8 @@ def check(
         Path | None, typer.Option("--output", "-o", metavar="FILE", help="Write the report to a file.")
     ] = None,
     crosswalk: Annotated[
-        bool, typer.Option("--crosswalk", help="List published recommendations too, met or not; JSON always does.")
+        bool,
+        typer.Option("--crosswalk", help="In text, list published recommendations too, met or not. JSON always does."),
     ] = False,
     force: Force = False,
 ) -> None:
@@ -70,15 +71,15 @@ def check(
     for finding in found.missing:
         typer.echo(f"error: {finding}", err=True)
     report = check_plans(found.paths, strict=strict)
-    if crosswalk and form is ReportFormat.text and output is None:
-        typer.echo(crosswalk_as_text(report), nl=False)
+    before = crosswalk_as_text(report) if crosswalk and form is ReportFormat.text else ""
     if output is not None:
-        write_whole(output, write_report(report, form.value), force=force)
+        write_whole(output, before + write_report(report, form.value), force=force)
         typer.echo(f"wrote {output}", err=True)
     elif form is ReportFormat.text and sys.stdout.isatty() and not os.environ.get("NO_COLOR"):
-        typer.echo(as_text(report, lambda text, kind: typer.style(text, fg=_COLOURS[kind], bold=True)), nl=False)
+        painted = as_text(report, lambda text, kind: typer.style(text, fg=_COLOURS[kind], bold=True))
+        typer.echo(before + painted, nl=False)
     else:
-        typer.echo(write_report(report, form.value), nl=False)
+        typer.echo(before + write_report(report, form.value), nl=False)
     usable = report.readable and not found.missing
     raise typer.Exit((0 if report.passed else 1) if usable else 2)
 

@@ -26,6 +26,7 @@ from adjustplan.estimate.exposure import ExposureCoding
 from adjustplan.estimate.kernel import NotEstimableError, Variance, contrast_of, regress
 from adjustplan.estimate.matrix import ModelMatrix, model_matrix
 from adjustplan.estimate.results import Estimate
+from adjustplan.identify.showing import list_text
 from adjustplan.study import Measure
 
 _EXACT = 1e-24  # share of the variance that is rounding only
@@ -158,5 +159,4 @@ def _names(matrix: ModelMatrix, directions: Floats) -> list[str]:
 
 
 def _listed(names: Sequence[str]) -> str:
-    quoted = [f"“{name}”" for name in names] or ["the covariates"]
-    return quoted[0] if len(quoted) == 1 else f"{', '.join(quoted[:-1])} and {quoted[-1]}"
+    return list_text([f"“{name}”" for name in names] or ["the covariates"])

@@ -264,3 +264,5 @@ def test_the_crosswalk_says_which_recommendations_are_met(run: Run, folder: Path
         assert f"STROBE, {number}. " in told
     assert "not met: STROBE, 12d. " in told
     assert json.loads(run("check", "study/plan.toml", "--format", "json").stdout)["crosswalk"]
+    assert run("check", "study/plan.toml", "--crosswalk", "-o", "report.txt").returncode == 0
+    assert (folder / "report.txt").read_text(encoding="utf-8") == told
