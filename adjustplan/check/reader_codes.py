@@ -9,8 +9,11 @@ from __future__ import annotations
 from collections.abc import Mapping
 from types import MappingProxyType
 
+from adjustplan.check.estimate_codes import ESTIMATE_CODES
+
 READER_CODES: Mapping[str, str] = MappingProxyType(
     {
+        **ESTIMATE_CODES,
         # the files a graph is read from
         "graph-unreadable": "The graph file is not there or may not be read. Its path is relative to the plan that"
         " names it. Mend the path, or make the file readable.",
@@ -69,15 +72,15 @@ READER_CODES: Mapping[str, str] = MappingProxyType(
         " mend the name.",
         "plan-missing-table": "What was asked for needs a table that the plan does not have yet.",
         "plan-no-data": "The planned regression was asked for, but the plan names no data. Add data to [analysis].",
-        "plan-unwaivable": "A waiver names a rule that guards the record itself, such as one on an edited seal file. It"
-        " cannot be waived, or a plan could talk itself out of it; record the change with “adjustplan amend”.",
+        "plan-unwaivable": "A waiver names a rule that guards the record itself, such as one on an edited seal file."
+        " It cannot be waived, or a plan could talk itself out of it; record the change with “adjustplan amend”.",
         "plan-unknown-rule": "A waiver names a rule that does not exist, so it waives nothing.",
         # starting a study, and the seal file beside a plan
-        "start-missing": "A new study needs a title, an exposure, an outcome and a design. Give them as options where"
-        " there is no terminal to ask on.",
+        "start-missing": "A new study needs a title, an exposure, an outcome and a design. Give them as options"
+        " where there is no terminal to ask on.",
         "start-empty": "A title or a name for a new study is empty.",
-        "start-same-name": "Two variables of a new study share a name. Exposure, outcome and covariates are different"
-        " variables.",
+        "start-same-name": "Two variables of a new study share a name. Exposure, outcome and covariates are"
+        " different variables.",
         "start-design": "The design named for a new study is none that is known.",
         "start-measure": "The measure named for a new study is none that its design can estimate.",
         "start-exists": "A study stands in the folder already, and nothing there is replaced.",
@@ -90,8 +93,8 @@ READER_CODES: Mapping[str, str] = MappingProxyType(
         "seal-nothing-changed": "The plan and its graph say what was last agreed, so there is no amendment to record.",
         "seal-data-unsaid": "Whether the data had been seen decides what a seal or amendment is worth, so it must be"
         " said either way.",
-        "seal-unseen": "An amendment says that the data have not been seen, but an earlier entry says that they were."
-        " What was seen stays seen.",
+        "seal-unseen": "An amendment says that the data have not been seen, but an earlier entry says that they"
+        " were. What was seen stays seen.",
         "seal-bad-date": "A seal or amendment is dated in the future, or before the entry that it follows.",
         "seal-unreadable": "The seal file is there but may not be read. Make it readable.",
         "seal-not-utf8": "A byte of the seal file is not UTF-8. Get the file back from version control.",
@@ -105,8 +108,8 @@ READER_CODES: Mapping[str, str] = MappingProxyType(
         "seal-chain-broken": "An entry of the seal file does not follow on the one before it: one was taken out or"
         " changed. Get the file back from version control.",
         "seal-order": "The entries of the seal file are in an order in which they cannot have been written.",
-        "seal-statements-edited": "What the seal file says was agreed does not fit the fingerprint of its last entry."
-        " Get the file back from version control.",
+        "seal-statements-edited": "What the seal file says was agreed does not fit the fingerprint of its last"
+        " entry. Get the file back from version control.",
         # the question put to the graph
         "question-missing": "A graph alone does not say what is asked. Name exposure and outcome, or a plan.",
         "question-effect": "The effect asked for is either total (through all paths) or direct (not through any"
@@ -114,8 +117,8 @@ READER_CODES: Mapping[str, str] = MappingProxyType(
         "question-same": "Exposure and outcome are one variable. Name two.",
         "question-restricted": "Exposure or outcome is held fixed by how people came into the data. It does not vary"
         " there, so no effect of it, or on it, can be seen.",
-        "question-which": "Sufficient sets are listed as all minimal ones, or as one: any, the smallest, the cheapest"
-        " or the most precise.",
+        "question-which": "Sufficient sets are listed as all minimal ones, or as one: any, the smallest, the"
+        " cheapest or the most precise.",
         "adjustment-member-is-end": "The exposure or the outcome is in the set to adjust for. Adjusting for either"
         " leaves no effect to estimate. Take it out.",
         "adjustment-exposure-outcome": "The exposure or the outcome is in a set of the plan. Adjusting for either"
@@ -135,6 +138,8 @@ READER_CODES: Mapping[str, str] = MappingProxyType(
         "data-unsupported-type": "A column holds dates, lists or the like, which no regression can use as they are."
         " Derive a number from it first.",
         # the values in the data
+        "data-out-of-range": "A weight or a time is 0 or below, follow-up ends before it begins, or a count or mean"
+        " that a ratio compares is below 0. Correct the values, or leave the cells empty.",
         "data-all-missing": "A column that is needed has no value in any row. Check the column and the export.",
         "data-one-level": "Exposure or outcome has one value in every row, so there is nothing to compare.",
         "data-infinite": "A column has infinite values, usually from a division by zero. Correct them, or leave the"
@@ -152,47 +157,14 @@ READER_CODES: Mapping[str, str] = MappingProxyType(
         "data-rows-dropped": "Rows that lack a value the planned regression needs were left out. If they differ from"
         " the others, the estimate is not for the whole population: say why they may be left out.",
         "data-no-complete-rows": "No row has a value for everything that a set needs, so it cannot be fitted.",
-        # the planned regression
-        "analysis-measure-not-built": "The measure is known, and a plan may state it, but no regression for it is"
-        " built yet.",
-        "analysis-measure-design": "The stated design cannot estimate the planned measure: its number would not be"
-        " what its name says. Choose a measure that the design can estimate.",
-        "estimate-default-form": "A number enters the regression as a straight line, because the plan states no form"
-        " for it. If its effect is curved, confounding is left: state a form.",
-        "estimate-exposure-form": "How the exposure enters was taken from its values. State its form to settle it.",
-        "estimate-constant-covariate": "A covariate has one value in all rows that were used, so it was left out; it"
-        " could not have changed anything.",
-        "estimate-collinear": "Some variables determine each other in the data. Among covariates that does no harm;"
-        " where it includes the exposure, the data cannot tell the effects apart.",
-        "estimate-few-rows": "The regression has as many parameters as there are rows, or more. Adjust for less, or"
-        " state simpler forms.",
-        "estimate-one-outcome": "Among the rows that are complete for this set the outcome never varies.",
-        "estimate-empty-level": "Among the rows that are complete for this set, one of the levels compared is missing.",
-        "estimate-separation": "Some variables predict the outcome without exception in part of the data, so the best"
-        " estimate is infinite. Merge rare levels, state a simpler form, or adjust for less.",
-        "estimate-no-convergence": "The regression found no best estimate, usually because of rare levels or extreme"
-        " values.",
-        "estimate-overflow": "The estimate or its interval is too large to be computed, usually because the exposure"
-        " is in a tiny unit or a level is rare.",
-        "estimate-exact": "The regression reproduces the outcome without error, so there is nothing to judge"
-        " precision by. The outcome was probably computed from the other columns.",
-        "estimate-spline-values": "A variable has too few different values for the curve that the plan states. State"
-        " fewer parameters, or another form.",
-        "estimate-spline-knots": "So many rows share one value that the bends of the curve were placed by the"
-        " different values and not by the rows.",
-        "estimate-too-many-levels": "A category has so many levels that the regression would not fit into memory."
-        " Group its levels, or leave it out.",
-        "estimate-limit": "The graph has more minimal sufficient sets than were fitted. Raise the limit to see more.",
-        "estimate-sets-without-data": "Minimal sufficient sets were left out, for the data have no column for a"
-        " member.",
         # writing, and the check itself
         "output-exists": "The file exists, and no file is replaced unless --force says so.",
         "output-is-folder": "A file is to be written where a folder is. Name a file.",
         "output-unwritable": "The file cannot be written: the folder is protected, or the disk is full.",
         "output-unknown-format": "The ending of a picture's name says its format, and this one names none that is"
         " written: .svg, .png or .dot.",
-        "output-no-layout": "The program that lays pictures out is missing or failed. Install graphviz-pure, or write"
-        " DOT, which needs no layout.",
+        "output-no-layout": "The program that lays pictures out is missing or failed. Install graphviz-pure, or"
+        " write DOT, which needs no layout.",
         "check-unknown-rule": "A code was asked for that no finding has. “adjustplan explain” lists them all.",
         "check-no-plans": "A folder or pattern given to “adjustplan check” holds no plan: no .toml file with a graph"
         " and a [question]. A check of nothing must not count as passed.",

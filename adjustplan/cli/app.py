@@ -56,6 +56,7 @@ def main() -> NoReturn:
         plans,
         registration,
         starting,
+        stressing,
     )
 
     for stream in (sys.stdout, sys.stderr):

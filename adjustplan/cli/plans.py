@@ -11,25 +11,29 @@ from adjustplan.cli.app import app
 from adjustplan.cli.arguments import Force, Format, OutputFormat, PlanPath
 from adjustplan.plan import read_plan
 from adjustplan.report import terminal
+from adjustplan.report.progress import progress_bar
 
 Limit = Annotated[int, typer.Option("--limit", min=0, help="Fit at most this many minimal sufficient sets.")]
 
 
 @app.command()
 def fit(plan: PlanPath, limit: Limit = 20, form: Format = OutputFormat.text) -> None:
-    """Fit the planned regression beside the crude one.
+    """Run the planned analysis: the adjusted estimate beside the crude one.
 
     Crude and adjusted estimates come from the same rows.
 
-    The planned set, its alternatives and every minimal sufficient set that the data allow are fitted, so that a reader
-    sees whether they agree. The exit code is 1 when there are findings above a note.
+    The planned set, its alternatives and every minimal sufficient set that the data allow are adjusted for, and tested
+    for whether they agree. Everything else follows from [analysis] in the plan: the way to adjust and the others to
+    show beside it, effect modification, weights, clusters, resampling, and what is done about missing values.
+    Diagnostics come along. The exit code is 1 when there are findings above a note.
 
     \b
     adjustplan fit plan.toml
     """
     from adjustplan.estimate import fit as fit_plan
 
-    result = fit_plan(read_plan(plan), limit=limit)
+    with progress_bar() as progress:
+        result = fit_plan(read_plan(plan), limit=limit, progress=progress)
     terminal.show(result, form.value)
     raise typer.Exit(0 if result.clean else 1)
 

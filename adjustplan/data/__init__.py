@@ -5,15 +5,19 @@ of each covariate pattern, ``patterns`` holds the counts, and ``checks`` says wh
 """
 
 from adjustplan.data.checks import check_columns, check_values
+from adjustplan.data.moments import Floats, Moments
 from adjustplan.data.patterns import Kind, Outcome, Patterns
-from adjustplan.data.reduction import reduce_to_patterns
+from adjustplan.data.reduction import Wanted, reduce_to_patterns
 from adjustplan.data.source import Source, open_data
 
 __all__ = [
+    "Floats",
     "Kind",
+    "Moments",
     "Outcome",
     "Patterns",
     "Source",
+    "Wanted",
     "check_columns",
     "check_values",
     "open_data",

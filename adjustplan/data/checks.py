@@ -17,10 +17,11 @@ import numpy as np
 import pandas as pd
 
 from adjustplan.data.patterns import Patterns
-from adjustplan.data.reduction import distinct_values
+from adjustplan.data.reduction import distinct_values, numbers
 from adjustplan.data.source import Source
 from adjustplan.errors import Finding, Severity, did_you_mean
 from adjustplan.plan import Plan
+from adjustplan.study import KINDS
 
 if TYPE_CHECKING:
     from adjustplan.plan.places import Key
@@ -84,7 +85,7 @@ def check_covariate(plan: Plan, source: Source, patterns: Patterns, variable: st
         return
     words = levels[pd.to_numeric(levels.index.to_series(), errors="coerce").isna().to_numpy()]
     blanks = words[[str(word).strip().casefold() in MISSING_WORDS for word in words.index]]
-    if form not in (None, "category"):
+    if form not in (None, "category", "stratum"):
         told = f": {show(words.index)}" if len(words) <= _FEW else ""
         message = f"“{column}” enters as {form} but holds text in {int(words.sum())} rows{told}."
         remedy = "Leave cells without a number empty, or state the form “category”."
@@ -99,9 +100,52 @@ def check_covariate(plan: Plan, source: Source, patterns: Patterns, variable: st
         yield _at_data(source, "data-missing-word", message, remedy, "warning")
 
 
+def check_roles(plan: Plan, source: Source) -> Iterator[Finding]:
+    """Columns that the analysis needs besides variables: there, of the right kind, and in range."""
+    analysis = plan.analysis
+    for role in ("person_time", "time", "entry", "weights", "cluster", "matched_set"):
+        column = getattr(analysis, role)
+        if column is None:
+            continue
+        key: Key = ("analysis", role)
+        kind, numeric = source.kinds.get(column), role in ("person_time", "time", "entry", "weights")
+        if kind is None:
+            remedy = did_you_mean(column, source.kinds, f"Mend {role} in [analysis].")
+            yield _at_plan(plan, "data-missing-column", f"The data have no column “{column}”.", remedy, key)
+        elif column in source.repeated:
+            message = f"The header has “{column}” more than once (capitals do not tell columns apart)."
+            yield _at_data(source, "data-column-twice", message, "Rename one of the columns.")
+        elif kind == "other" or (numeric and kind != "number"):
+            message = (
+                f"“{column}”, the {role} of the analysis, holds no {'numbers' if numeric else 'names or numbers'}."
+            )
+            yield _at_data(source, "data-unsupported-type", message, "Correct the column, or derive a number from it.")
+        elif numeric:
+            yield from _check_range(plan, source, role, column)
+
+
+def _check_range(plan: Plan, source: Source, role: str, column: str) -> Iterator[Finding]:
+    """Weights and times are finite and above 0, and follow-up ends after it begins."""
+    values = numbers(source, column)
+    low = values < 0 if role == "entry" else values <= 0
+    wrong = {"range": (low | values.isinf()).sum()}
+    end = plan.analysis.time
+    if role == "entry" and end is not None and end in source.kinds:
+        wrong["order"] = (values >= numbers(source, end)).sum()
+    counted = source.table.aggregate(**wrong).execute().iloc[0].fillna(0).astype(int)
+    if counted["range"]:
+        limit = "below 0" if role == "entry" else "0 or below"
+        message = f"“{column}”, the {role} of the analysis, is {limit} or infinite in {counted['range']} rows."
+        yield _at_data(source, "data-out-of-range", message, "Correct them, or leave the cells empty.")
+    if counted.get("order", 0):
+        message = f"Follow-up ends before it begins, or at once, in {counted['order']} rows (“{column}”)."
+        yield _at_data(source, "data-out-of-range", message, "Correct the times, or leave the cells empty.")
+
+
 def _check_outcome(plan: Plan, source: Source, patterns: Patterns) -> Iterator[Finding]:
     outcome, column = patterns.outcome, plan.column(plan.question.outcome)
-    binary = plan.analysis.measure != "mean difference"
+    kind = KINDS[plan.analysis.measure]
+    binary = kind in ("risk", "hazard")
     wanted = "0 and 1" if binary else "numbers"
     if outcome.kind == "text":
         values = distinct_values(source, column, 10 * _FEW)
@@ -118,7 +162,11 @@ def _check_outcome(plan: Plan, source: Source, patterns: Patterns) -> Iterator[F
     elif outcome.observed == 0:
         message = f"The outcome “{column}” is missing in every row."
         yield _at_data(source, "data-all-missing", message, "Check the column and the export.")
-    elif outcome.lowest == outcome.highest:
+    elif outcome.lowest < 0 and (kind == "rate" or plan.analysis.measure == "mean ratio"):
+        low = f"{outcome.lowest:.4g}"
+        message = f"The outcome “{column}” is as low as {low}, but the {plan.analysis.measure} needs 0 or more."
+        yield _at_data(source, "data-out-of-range", message, "Correct the outcome, or estimate another measure.")
+    elif outcome.lowest == outcome.highest and kind != "rate":
         message = f"The outcome “{column}” has the same value in every row."
         yield _at_data(source, "data-one-level", message, "Without two levels there is nothing to explain.")
     elif binary and outcome.not_binary:

@@ -1,33 +1,33 @@
-"""Covariate patterns: all that a regression needs to know about the rows.
+"""Covariate patterns: all that the models need to know of the rows.
 
-People who share the same exposure and the same covariates form a *covariate pattern*. A regression gives
-everybody in a pattern the same fitted value, so it makes no difference to it who in the pattern had which
-outcome: how many people there are, the mean of their outcomes and the sum of the squared deviations from that
-mean say everything. For an outcome of 0 and 1 the mean is the share with the outcome; for a continuous
-outcome the squared deviations carry what the residuals need. Estimates and standard errors from the patterns
-are those from the rows, exactly.
+Rows that agree in the exposure and every covariate form a *pattern*. How many rows a pattern has and the moments of
+their outcomes are enough to fit a regression exactly as if every row had been there. Ten million rows of a few
+categories become some hundred patterns; with continuous covariates nearly every row is a pattern of its own, and
+nothing is lost then either.
 
-A value can be missing, so "missing" is a level of its own until a model asks for the rows that are complete
-for its variables; only then is it known who is left out, and why.
+What must not be summed away stays apart: the cluster, the matched set, the times of a survival analysis. And where
+people are to be resampled or their missing values imputed, the outcome stays apart too, so that a pattern is one kind
+of person; such patterns are called *atoms*.
 """
 
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from adjustplan.data.moments import Floats, Moments
+
 Kind = Literal["number", "boolean", "text", "other"]
-Floats = NDArray[np.float64]
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, slots=True)
 class Outcome:
-    """The outcome over the whole file.
+    """What the whole file says about the outcome, over rows of every pattern.
 
     Attributes
     ----------
@@ -63,31 +63,48 @@ class Patterns:
         The kind of each variable.
     rows : array of int, shape (patterns,)
         Rows of the file with this pattern.
-    observed : array of int, shape (patterns,)
-        Those of them that have an outcome.
-    mean : array of float, shape (patterns,)
-        Mean outcome, in the outcome's unit; not a number where none was observed.
-    deviations : array of float, shape (patterns,)
-        Sum of squared deviations of the outcomes from that mean.
+    moments : Moments
+        Of the outcomes of those rows that have one.
     outcome : Outcome
         The outcome over the whole file.
+    keys : pandas.DataFrame, shape (patterns, keys)
+        What stays apart besides: any of "cluster", "matched_set", "time", "entry".
     """
 
     values: pd.DataFrame
     kinds: Mapping[str, Kind]
     rows: NDArray[np.int64]
-    observed: NDArray[np.int64]
-    mean: Floats
-    deviations: Floats
+    moments: Moments
     outcome: Outcome
+    keys: pd.DataFrame
 
     def __len__(self) -> int:
         return len(self.rows)
 
     @property
+    def observed(self) -> NDArray[np.int64]:
+        """Rows of each pattern that have an outcome."""
+        return self.moments.people
+
+    @property
+    def mean(self) -> Floats:
+        """Mean outcome of each pattern, in the outcome's unit; not a number where none was observed."""
+        return self.moments.mean
+
+    @property
+    def deviations(self) -> Floats:
+        """Sum of squared deviations of the outcomes of each pattern from that mean."""
+        return self.moments.deviations
+
+    @property
     def total(self) -> int:
         """Rows of the file."""
         return int(self.rows.sum())
+
+    @property
+    def people(self) -> int:
+        """Rows that have an outcome."""
+        return int(self.moments.people.sum())
 
     def levels(self, variable: str) -> pd.Series:
         """The distinct values of a variable, sorted, each with its number of rows (values as index)."""
@@ -99,29 +116,49 @@ class Patterns:
         """Rows that lack this variable."""
         return int(self.rows[self.values[variable].isna().to_numpy()].sum())
 
-    def complete(self, variables: Sequence[str]) -> Patterns:
+    def is_complete(self, variables: Sequence[str]) -> NDArray[np.bool_]:
+        """Which patterns have the outcome and each of ``variables``, and whatever stays apart."""
+        known = self.values[list(variables)].notna().all(axis=1).to_numpy() & (self.observed > 0)
+        return np.asarray(known & self.keys.notna().all(axis=1).to_numpy())
+
+    def complete(self, variables: Sequence[str], *, pooled: bool = True) -> Patterns:
         """The rows that have the outcome and each of ``variables``, as patterns of these variables alone.
 
-        Patterns that differ only in other variables are pooled: their means are averaged by their numbers of
-        rows, and what their means lie apart is added to the squared deviations.
+        Patterns that differ only in other variables are pooled, unless ``pooled`` is false.
         """
-        values = self.values[list(variables)]
-        kept = values.notna().all(axis=1).to_numpy() & (self.observed > 0)
-        parts = pd.DataFrame({"n": self.observed[kept], "mean": self.mean[kept], "ss": self.deviations[kept]})
-        group = values[kept].groupby(list(variables), sort=True).ngroup().to_numpy()
-        first = pd.Series(group).drop_duplicates()
-        order = first.index[np.argsort(first.to_numpy())]
-        count = len(order)
-        n = np.bincount(group, weights=parts["n"], minlength=count)
-        mean = np.bincount(group, weights=parts["n"] * parts["mean"], minlength=count) / n
-        apart = parts["ss"] + parts["n"] * (parts["mean"] - mean[group]) ** 2
-        rows = n.astype(np.int64)
-        return Patterns(
-            values[kept].iloc[order].reset_index(drop=True),
-            {variable: self.kinds[variable] for variable in variables},
-            rows,
-            rows,
-            mean,
-            np.bincount(group, weights=apart, minlength=count).astype(np.float64),
-            self.outcome,
-        )
+        kinds = {variable: self.kinds[variable] for variable in variables}
+        kept = replace(self, values=self.values[list(variables)], kinds=kinds).only(self.is_complete(variables))
+        if not pooled:
+            return replace(kept, rows=kept.moments.people)
+        values, keys = kept.values, kept.keys
+        group, order = self._grouping(values, keys)
+        moments = kept.moments.pool(group, len(order))
+        values, keys = values.iloc[order].reset_index(drop=True), keys.iloc[order].reset_index(drop=True)
+        return Patterns(values, kinds, moments.people, moments, self.outcome, keys)
+
+    def only(self, chosen: NDArray[np.bool_]) -> Patterns:
+        """Some of the patterns."""
+        values, keys = self.values[chosen].reset_index(drop=True), self.keys[chosen].reset_index(drop=True)
+        return replace(self, values=values, rows=self.rows[chosen], moments=self.moments.of(chosen), keys=keys)
+
+    def place(self, variables: Sequence[str]) -> NDArray[np.intp]:
+        """Which pattern of ``complete(variables)`` each pattern went to; -1 for those that are not complete."""
+        kept = self.is_complete(variables)
+        places = np.full(len(self), -1, dtype=np.intp)
+        places[kept] = self._grouping(self.values.loc[kept, list(variables)], self.keys[kept])[0]
+        return places
+
+    @staticmethod
+    def _grouping(values: pd.DataFrame, keys: pd.DataFrame) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
+        """The number of each line's group, groups being sorted by their values, and a line of each group."""
+        apart = pd.concat([values, keys.add_prefix("\0")], axis=1)
+        group = apart.groupby(list(apart.columns), sort=True).ngroup().to_numpy(dtype=np.intp)
+        _, order = np.unique(group, return_index=True)
+        return np.asarray(group, dtype=np.intp), np.asarray(order, dtype=np.intp)
+
+    def grouped(self, variable: str, cuts: Sequence[float]) -> Patterns:
+        """The same with a number replaced by its group: 0 below the first cut, 1 from it to the second, and so on."""
+        numbers = self.values[variable]
+        group = np.searchsorted(np.asarray(cuts, dtype=np.float64), numbers.to_numpy(dtype=np.float64), side="right")
+        values = self.values.assign(**{variable: np.where(numbers.isna(), np.nan, group.astype(np.float64))})
+        return replace(self, values=values)

@@ -7,12 +7,13 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from adjustplan.estimate.results import AdjustedEstimate, Estimate, Fit
+from adjustplan.estimate.fit_result import Fit
+from adjustplan.estimate.results import AdjustedEstimate, Estimate, WayEstimate
 
 if TYPE_CHECKING:
     from adjustplan.estimate.fitting import fit
 
-__all__ = ["AdjustedEstimate", "Estimate", "Fit", "fit"]
+__all__ = ["AdjustedEstimate", "Estimate", "Fit", "WayEstimate", "fit"]
 
 
 def __getattr__(name: str) -> Any:

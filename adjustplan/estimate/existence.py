@@ -18,9 +18,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from adjustplan.data.patterns import Floats
-from adjustplan.estimate.kernel import Regression
-from adjustplan.study import Measure
+from adjustplan.data import Floats
+from adjustplan.estimate.kernel import Family, Regression
 
 _RANK_TOLERANCE = 1e-10
 _PART_TOLERANCE = 1e-6
@@ -60,21 +59,23 @@ def parts(directions: Floats) -> NDArray[np.bool_]:
     return np.asarray((np.abs(directions) > _PART_TOLERANCE * np.abs(directions).max()).any(axis=1))
 
 
-def looks_separated(regression: Regression, measure: Measure) -> bool:
+def looks_separated(regression: Regression) -> bool:
     """Whether a fit shows signs of separation.
 
     Under separation a coefficient grows by about one in every step, so the iterations either do not settle or
     end only where fitted means reach the edge of the arithmetic; a fit that settled away from there is none.
     """
+    if regression.family.name == "linear":
+        return False
     if not regression.converged:
         return True
     edge = np.exp(-_FAR)
     fitted = regression.fitted
-    at_edge = fitted.min() < edge or (measure == "odds ratio" and fitted.max() > 1 - edge)
+    at_edge = fitted.min() < edge or (regression.family.name == "logistic" and fitted.max() > 1 - edge)
     return bool(at_edge) or bool(np.abs(regression.coefficients).max() > 2 * _FAR)
 
 
-def separating_direction(columns: Floats, mean: Floats, measure: Measure) -> Floats | None:
+def separating_direction(columns: Floats, mean: Floats, family: Family) -> Floats | None:
     """A direction that separates, or None when the maximum likelihood estimate exists.
 
     Parameters
@@ -83,18 +84,19 @@ def separating_direction(columns: Floats, mean: Floats, measure: Measure) -> Flo
         Model matrix of full column rank.
     mean : array of float, shape (patterns,)
         Share with the outcome; exactly 0 or 1 where all or none have it.
-    measure : {"odds ratio", "risk ratio"}
+    family : Family
+        Logistic, or one with a logarithmic link.
 
     Notes
     -----
-    Patterns with both outcomes (for the risk ratio: with any case) force x'b = 0. They leave a
+    Patterns with both outcomes (for a logarithmic link: with any case) force x'b = 0. They leave a
     null space, which is usually empty, and then nothing needs to be solved. Otherwise the programme maximises
     Σ ±x'b over that space with every term between 0 and 1: the optimum is at least 1 when a separating
     direction exists and 0 when none does.
     """
     from scipy.optimize import linprog
 
-    pure = (mean == 0) | (mean == 1) if measure == "odds ratio" else mean == 0
+    pure = (mean == 0) | (mean == 1) if family.name == "logistic" else mean == 0
     free = columns[~pure]
     space = null_directions(free) if len(free) else np.eye(columns.shape[1])
     if space.shape[1] == 0:

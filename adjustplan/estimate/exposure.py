@@ -11,11 +11,13 @@ The plan's contrast names two levels. They are looked up in the data:
   the reference to the exposed value, or of one unit more when the plan has no contrast. When both numbers are
   values in the data and there are at most ten values, as with a dose of 0, 1 or 2, they are categories, which
   assumes less.
+* *Numbers with stated cuts*: the group of the exposed value is compared with the group of the reference value.
 * *Text*: always categories, and the plan must say which two to compare.
 """
 
 from __future__ import annotations
 
+from bisect import bisect_right
 from dataclasses import dataclass
 
 from adjustplan.data import Patterns
@@ -39,6 +41,8 @@ class ExposureCoding:
         The two values compared, as they stand in the patterns.
     words : tuple of (str, str)
         The two in the plan's words.
+    shift : bool
+        Whether everybody is compared with themselves one unit lower, in place of two fixed levels.
     findings : tuple of Finding
         Notes on what was assumed.
     """
@@ -47,6 +51,7 @@ class ExposureCoding:
     exposed: float | str
     reference: float | str
     words: tuple[str, str]
+    shift: bool = False
     findings: tuple[Finding, ...] = ()
 
 
@@ -64,6 +69,8 @@ def code_exposure(plan: Plan, patterns: Patterns) -> ExposureCoding:
     binary = kind != "text" and set(levels) <= {0.0, 1.0}
     form = plan.analysis.forms.get(exposure)
     if contrast is None:
+        if form is not None and form.startswith("cut"):
+            raise _refusal(plan, f"The exposure “{exposure}” is cut into {len(levels)} groups.", "")
         if binary:
             return ExposureCoding("category", 1.0, 0.0, ("1", "0") if kind == "number" else ("true", "false"))
         if kind == "text" or len(levels) == 2 or form == "category":
@@ -71,9 +78,12 @@ def code_exposure(plan: Plan, patterns: Patterns) -> ExposureCoding:
         note = _note(plan, f"The effect is that of one unit more of “{exposure}”, which enters as {form or 'linear'}.")
         if form not in (None, "linear"):
             raise _refusal(plan, f"“{exposure}” enters as {form}, so one unit more has no single effect.", "")
-        return ExposureCoding("linear", 1.0, 0.0, (f"{exposure} + 1", exposure), (note,))
+        return ExposureCoding("linear", 1.0, 0.0, (f"{exposure} + 1", exposure), True, (note,))
     words = (str(contrast.exposed), str(contrast.reference))
     exposed, reference = _value(contrast.exposed, kind == "text"), _value(contrast.reference, kind == "text")
+    if form is not None and form.startswith("cut"):
+        exposed, reference = (_group(value, cut_points(form)) for value in (exposed, reference))
+        form = "category"
     here = [value in levels for value in (exposed, reference)]
     if words[0] == words[1] or (exposed == reference and exposed is not None):
         raise _refusal(plan, f"The contrast compares “{words[0]}” with itself.", "")
@@ -90,9 +100,9 @@ def code_exposure(plan: Plan, patterns: Patterns) -> ExposureCoding:
         raise _refusal(plan, message, "")
     if form is None and all(here) and len(levels) <= _MOST_CATEGORIES:
         note = _note(plan, f"“{exposure}” enters as categories, one for each of its {len(levels)} values.")
-        return ExposureCoding("category", exposed, reference, words, (note,))
+        return ExposureCoding("category", exposed, reference, words, findings=(note,))
     notes = () if form else (_note(plan, f"“{exposure}” enters as linear."),)
-    return ExposureCoding(form or "linear", exposed, reference, words, notes)
+    return ExposureCoding(form or "linear", exposed, reference, words, findings=notes)
 
 
 def _value(level: str | bool | int | float, text: bool) -> float | str | None:
@@ -108,6 +118,18 @@ def _value(level: str | bool | int | float, text: bool) -> float | str | None:
         return float(level)
     except ValueError:
         return None
+
+
+def cut_points(form: str) -> tuple[float, ...]:
+    """The cuts of the form "cut(30, 45)", in rising order; none for other forms."""
+    if not form.startswith("cut"):
+        return ()
+    return tuple(sorted({float(part) for part in form.removeprefix("cut(").removesuffix(")").split(",")}))
+
+
+def _group(value: float | str | None, cuts: tuple[float, ...]) -> float | str | None:
+    """The group that a value of the contrast falls into."""
+    return float(bisect_right(cuts, value)) if isinstance(value, float) else None
 
 
 def _listed(levels: list[float | str]) -> str:

@@ -7,22 +7,23 @@ columns that together draw any smooth curve that is straight beyond the ends: a 
 knots at the lowest and the highest value and at k - 1 quantiles of the rows in between (Harrell 2015,
 Regression Modeling Strategies, section 2.4.6).
 
-What is asked of the model is not a coefficient but a *contrast* of coefficients: the difference between the
-linear predictors of an exposed and an unexposed person who are otherwise alike. That covers all three forms.
+Three versions of the matrix are kept: as people are, as if everybody were exposed, and as if everybody were at the
+reference. The first is fitted; the other two predict. Where the effect is one number on the scale of the linear
+predictor, that number is the *contrast*: the coefficients times the difference of a line of the second and the third.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from adjustplan.data.patterns import Floats, Patterns
+from adjustplan.data import Floats, Patterns
 from adjustplan.errors import Finding
 from adjustplan.estimate.exposure import ExposureCoding
-from adjustplan.estimate.kernel import NotEstimableError
+from adjustplan.estimate.not_estimable import NotEstimableError
 
 _MOST_NUMBERS = 250_000_000  # two gigabytes of model matrix
 
@@ -34,63 +35,106 @@ class ModelMatrix:
     Attributes
     ----------
     columns : array of float, shape (patterns, parameters)
+        As people are.
     variables : tuple of str
-        The variable behind each column; empty for the intercept.
-    contrast : array of float, shape (parameters,)
-        Exposed minus reference.
+        The variable behind each column; empty for the intercept. A product of exposure and modifier is the exposure's.
+    exposed, reference : array of float, shape (patterns, parameters)
+        As if everybody had the exposed, or the reference, level.
+    covariates : array of bool, shape (parameters,)
+        Which columns the exposure has no part in.
     findings : tuple of Finding
         What was left out or assumed.
     """
 
     columns: Floats
     variables: tuple[str, ...]
-    contrast: Floats
+    exposed: Floats
+    reference: Floats
+    covariates: NDArray[np.bool_]
     findings: tuple[Finding, ...] = ()
 
+    @property
+    def contrast(self) -> Floats:
+        """Exposed minus reference, shape (parameters,), where it is the same for everybody."""
+        return np.asarray(self.exposed[0] - self.reference[0])
 
-def model_matrix(patterns: Patterns, exposure: str, coding: ExposureCoding, forms: Mapping[str, str]) -> ModelMatrix:
-    """Build the model matrix of the exposure and every other variable of ``patterns``.
+    def keep(self, places: NDArray[np.intp]) -> ModelMatrix:
+        """The same with some of the columns."""
+        return ModelMatrix(
+            self.columns[:, places],
+            tuple(self.variables[place] for place in places),
+            self.exposed[:, places],
+            self.reference[:, places],
+            self.covariates[places],
+            self.findings,
+        )
+
+
+def model_matrix(
+    patterns: Patterns,
+    exposure: str,
+    coding: ExposureCoding,
+    forms: Mapping[str, str],
+    members: Sequence[str],
+    modifier: str | None = None,
+) -> ModelMatrix:
+    """Build the model matrix of the exposure and the members of a set.
 
     Parameters
     ----------
     patterns : Patterns
-        Of complete rows.
+        Of rows that are complete for all of them.
     exposure : str
     coding : ExposureCoding
     forms : mapping of str to str
-        "category", "linear" or "spline(k)" of each covariate.
+        "category", "linear" or "spline(k)" of each member.
+    members : sequence of str
+    modifier : str, optional
+        A member whose products with the exposure are added.
 
     Raises
     ------
     NotEstimableError
-        If a level of the contrast has no complete row, a spline has too few values, or the matrix would not
-        fit into memory.
+        If a level of the contrast has no complete row, a spline has too few values, or the matrix would not fit into
+        memory.
     """
-    blocks: list[Floats] = [np.ones((len(patterns), 1))]
-    owners: list[str] = [""]
     findings: list[Finding] = []
-    sizes = sum(_width(patterns, name, forms.get(name, coding.form)) for name in patterns.values.columns)
+    names = [exposure, *members]
+    sizes = sum(_width(patterns, name, forms.get(name, coding.form)) for name in names)
     if sizes * len(patterns) > _MOST_NUMBERS:
-        most = max(patterns.values.columns, key=lambda name: _width(patterns, name, forms.get(name, coding.form)))
+        most = max(names, key=lambda name: _width(patterns, name, forms.get(name, coding.form)))
         message = f"The model would need {sizes} columns, most of them for the levels of “{most}”."
         raise NotEstimableError("estimate-too-many-levels", message, "Group its levels, or leave it out.")
-    block, contrast = _exposure_block(patterns, exposure, coding, findings)
-    blocks.append(block)
-    owners += [exposure] * block.shape[1]
-    for name in patterns.values.columns:
-        if name == exposure:
-            continue
+    block, ends = _exposure_block(patterns, exposure, coding, findings)
+    own: dict[str, Floats] = {}
+    for name in members:
         if len(patterns.levels(name)) == 1:
             message = f"“{name}” has one value in all complete rows, so it was left out of this model."
             remedy = "Nothing is lost by it, but ask why it does not vary."
             findings.append(Finding("estimate-constant-covariate", message, remedy, "warning"))
             continue
-        block = _block(patterns, name, forms[name], findings)
-        blocks.append(block)
-        owners += [name] * block.shape[1]
-    padded = np.zeros(len(owners))
-    padded[1 : 1 + len(contrast)] = contrast
-    return ModelMatrix(np.hstack(blocks), tuple(owners), padded, tuple(findings))
+        own[name] = _block(patterns, name, forms[name], findings)
+    modifying = own.get(modifier) if modifier else None
+    if modifier and modifying is None and forms[modifier] == "stratum":  # its own effect is in the baseline hazards
+        modifying = _block(patterns, modifier, "category", findings)
+    count = len(patterns)
+
+    def composed(exposed: Floats) -> Floats:
+        parts = [np.ones((count, 1)), exposed]
+        if modifying is not None:
+            parts += [exposed[:, [place]] * modifying for place in range(exposed.shape[1])]
+        return np.hstack([*parts, *own.values()])
+
+    owners = ["", *[exposure] * (block.shape[1] * (1 + (0 if modifying is None else modifying.shape[1])))]
+    owners += [name for name, part in own.items() for _ in range(part.shape[1])]
+    return ModelMatrix(
+        composed(block),
+        tuple(owners),
+        composed(np.broadcast_to(ends[0], block.shape)),
+        composed(np.broadcast_to(ends[1], block.shape)),
+        np.array([owner != exposure for owner in owners]),
+        tuple(findings),
+    )
 
 
 def _width(patterns: Patterns, name: str, form: str) -> int:
@@ -111,7 +155,10 @@ def _block(patterns: Patterns, name: str, form: str, findings: list[Finding]) ->
 def _exposure_block(
     patterns: Patterns, exposure: str, coding: ExposureCoding, findings: list[Finding]
 ) -> tuple[Floats, Floats]:
-    """The columns of the exposure, and exposed minus reference on these columns."""
+    """The columns of the exposure, and their values at the exposed and at the reference level.
+
+    Where everybody is moved by one unit from where they are, these values differ from line to line.
+    """
     values = patterns.values[exposure].to_numpy()
     levels = list(patterns.levels(exposure).index)
     if coding.form == "category":
@@ -120,29 +167,30 @@ def _exposure_block(
                 message = f"None of the complete rows has “{word}” as “{exposure}”."
                 raise NotEstimableError("estimate-empty-level", message, "Look at which covariate is missing there.")
         others = [level for level in levels if level != coding.reference]
-        return _indicators(values, others), np.array([float(level == coding.exposed) for level in others])
+        ends = np.array([[float(level == end) for level in others] for end in (coding.exposed, coding.reference)])
+        return _indicators(values, others), ends
     if len(levels) == 1:
         message = f"“{exposure}” has one value in all complete rows."
         raise NotEstimableError("estimate-empty-level", message, "Look at which covariate is missing elsewhere.")
-    exposed, reference = float(coding.exposed), float(coding.reference)
+    wanted = np.array([float(coding.exposed), float(coding.reference)])
     if coding.form == "linear":
-        column, scale = _standardised(values)
-        return column[:, None], np.array([(exposed - reference) / scale])
-    wanted = np.array([exposed, reference])
-    block, ends = _spline(values, patterns.rows, exposure, coding.form, wanted, findings)
-    return block, ends[0] - ends[1]
+        column, middle, scale = _standardised(values)
+        if coding.shift:
+            return column[:, None], np.stack([column + (wanted[0] - wanted[1]) / scale, column])[:, :, None]
+        return column[:, None], ((wanted - middle) / scale)[:, None]
+    return _spline(values, patterns.rows, exposure, coding.form, wanted, findings)
 
 
 def _indicators(values: NDArray[np.generic], levels: list[float | str]) -> Floats:
     return np.column_stack([values == level for level in levels]).astype(np.float64)
 
 
-def _standardised(values: NDArray[np.generic]) -> tuple[Floats, float]:
-    """The values shifted to the middle of their range, in units of half the range; and that unit."""
+def _standardised(values: NDArray[np.generic]) -> tuple[Floats, float, float]:
+    """The values shifted to the middle of their range, in units of half the range; that middle and that unit."""
     numbers = values.astype(np.float64)
     low, high = float(numbers.min()), float(numbers.max())
     scale = (high - low) / 2
-    return (numbers - (low + scale)) / scale, scale
+    return (numbers - (low + scale)) / scale, low + scale, scale
 
 
 def _spline(

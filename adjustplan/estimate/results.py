@@ -7,20 +7,28 @@ that looks like one, and the findings beside it say why.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from dataclasses import asdict, dataclass, field
-from html import escape
-from typing import TYPE_CHECKING, Any, Literal
+from collections.abc import Sequence
+from dataclasses import asdict, dataclass
+from typing import Any, Literal, Protocol
 
 from adjustplan.errors import Finding
-from adjustplan.identify.showing import Tabular
-from adjustplan.study import Measure
-
-if TYPE_CHECKING:
-    import pandas as pd
+from adjustplan.plan.analysis_schema import Model, Way
 
 Origin = Literal["planned", "alternative", "minimal"]
-_NUMBERS = ("estimate", "lower", "upper", "standard_error")
+
+
+class Section(Protocol):
+    """A part of a fit beside its main table: it prints itself, and has a JSON form."""
+
+    @property
+    def findings(self) -> tuple[Finding, ...]:
+        """What to know about it."""
+
+    def lines(self) -> list[str]:
+        """As text: a heading, and lines below it."""
+
+    def to_dict(self) -> dict[str, Any]:
+        """As JSON-ready values."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,123 +87,49 @@ class AdjustedEstimate:
     findings: tuple[Finding, ...] = ()
 
 
-@dataclass(frozen=True)
-class Fit(Tabular):
-    """The planned analysis, run.
+@dataclass(frozen=True, slots=True)
+class WayEstimate:
+    """The planned set's effect, adjusted in one way.
 
     Attributes
     ----------
-    measure : {"mean difference", "odds ratio", "risk ratio"}
-    effect : {"total", "direct"}
-    exposure, outcome : str
-    contrast : tuple of (str, str)
-        The two exposure levels in words: the one whose effect it is, and the one it is compared with.
-    variance : {"model", "robust"}
-        Which standard error.
+    way, model : str
+        The way to adjust, and the outcome regression it uses (weighting and stratification use none).
+    conditional : bool
+        Whether people alike in the covariates are compared, rather than two states of the whole population.
+    means : tuple of (float, float) or None
+        Marginal ways: the mean outcome, risk or rate had everybody been exposed, and had nobody been.
+    estimate : Estimate or None
     rows : int
-        Rows analysed for the planned set: complete for outcome, exposure and its members.
-    rows_total : int
-        Rows of the file.
-    missing : mapping of str to int
-        For each variable used, the rows that lack it; a row may lack several.
-    patterns : int
-        Covariate patterns the rows were reduced to.
-    crude : Estimate or None
-        On the rows of the planned set.
-    adjusted : tuple of AdjustedEstimate
-        The planned set first, then the alternatives, then the minimal sufficient sets by size and name.
     findings : tuple of Finding
-        What concerns all of them.
     """
 
-    measure: Measure
-    effect: Literal["total", "direct"]
-    exposure: str
-    outcome: str
-    contrast: tuple[str, str]
-    variance: Literal["model", "robust"]
+    way: Way
+    model: Model | None
+    conditional: bool
+    means: tuple[float, float] | None
+    estimate: Estimate | None
     rows: int
-    rows_total: int
-    missing: dict[str, int] = field(hash=False)
-    patterns: int
-    crude: Estimate | None
-    adjusted: tuple[AdjustedEstimate, ...]
     findings: tuple[Finding, ...] = ()
 
     def to_dict(self) -> dict[str, Any]:
-        """The fit as JSON-ready values; None stands where nothing could be estimated."""
+        """As JSON-ready values, with the numbers of the estimate beside the way."""
         plain = asdict(self)
-        plain["rows_dropped"] = self.rows_total - self.rows
-        plain["contrast"] = {"exposed": self.contrast[0], "reference": self.contrast[1]}
-        plain["findings"] = [finding.to_dict() for finding in self.findings]
-        for row, result in zip(plain["adjusted"], self.adjusted, strict=True):
-            row["set"] = list(row.pop("members"))
-            row["origins"] = list(result.origins)
-            row["findings"] = [finding.to_dict() for finding in result.findings]
-        plain["adjusted"] = list(plain["adjusted"])
-        return plain
-
-    @property
-    def clean(self) -> bool:
-        """Whether no finding is graver than a note."""
-        return all(finding.severity == "note" for finding in self._said)
-
-    @property
-    def _said(self) -> tuple[Finding, ...]:
-        """All findings, each once."""
-        said = [*self.findings, *(finding for result in self.adjusted for finding in result.findings)]
-        return tuple(dict.fromkeys(said))
-
-    def caption(self) -> str:
-        """What is estimated, in one line."""
-        exposed, reference = self.contrast
-        return f"{self.measure.capitalize()} of {self.outcome} for {self.exposure}: {exposed} against {reference}"
-
-    def records(self) -> Iterator[dict[str, Any]]:
-        """One line for the crude estimate and one for each set; what could not be estimated is None."""
-        yield {"set": "crude", "origins": "", "sufficient": None, "rows": self.rows, **_numbers(self.crude)}
-        for result in self.adjusted:
-            yield {
-                "set": ", ".join(result.members) or "nothing",
-                "origins": ", ".join(result.origins),
-                "sufficient": result.sufficient,
-                "rows": result.rows,
-                **_numbers(result),
-            }
-
-    def to_frame(self) -> pd.DataFrame:
-        """The records as a frame; what could not be estimated is not a number."""
-        return super().to_frame().astype(dict.fromkeys(_NUMBERS, "float64"))
-
-    def __str__(self) -> str:
-        rows = f"{self.rows} of {self.rows_total} rows"
-        head = f"{self.caption()}\n{rows}, 95 % confidence intervals, {self.variance} variance"
-        lines = [("crude", _interval(self.crude), self.rows, "")]
-        lines += [
-            (
-                ", ".join(result.members) or "nothing",
-                _interval(result),
-                result.rows,
-                ", ".join(result.origins),
-            )
-            for result in self.adjusted
-        ]
-        wide = max(len(line[0]) for line in lines)
-        middle = max(len(line[1]) for line in lines)
-        body = [f"  {name:<{wide}}  {shown:<{middle}}  {rows:>9} rows  {why}" for name, shown, rows, why in lines]
-        said = [f"  {finding.severity}: {finding}" for finding in self._said]
-        return "\n".join(line.rstrip() for line in [head, *body, *said])
-
-    def _repr_html_(self) -> str:
-        items = "".join(f"<li>{escape(f'{finding.severity}: {finding}')}</li>" for finding in self._said)
-        return super()._repr_html_() + (f"<ul>{items}</ul>" if items else "")
+        numbers = plain.pop("estimate") or dict.fromkeys(("estimate", "lower", "upper", "standard_error"))
+        means = None if self.means is None else {"exposed": self.means[0], "reference": self.means[1]}
+        return plain | numbers | {"means": means, "findings": [finding.to_dict() for finding in self.findings]}
 
 
-def _numbers(result: Estimate | AdjustedEstimate | None) -> dict[str, float | None]:
-    return {name: getattr(result, name, None) for name in _NUMBERS}
-
-
-def _interval(result: Estimate | AdjustedEstimate | None) -> str:
+def interval_text(result: Estimate | AdjustedEstimate | None) -> str:
+    """``1.62 (1.30 to 2.02)``, or that there is no estimate."""
     if result is None or result.estimate is None:
         return "not estimated"
     return f"{result.estimate:.3g} ({result.lower:.3g} to {result.upper:.3g})"
+
+
+def aligned(rows: Sequence[Sequence[str]]) -> list[str]:
+    """Rows of text with their columns under each other, indented."""
+    widths = [max(len(cell) for cell in column) for column in zip(*rows, strict=True)] if rows else []
+    return [
+        "  " + "  ".join(f"{cell:<{width}}" for cell, width in zip(row, widths, strict=True)).rstrip() for row in rows
+    ]

@@ -28,6 +28,11 @@ class ReportedSet:
     rationale: str = ""
     findings: tuple[Finding, ...] = ()
 
+    @property
+    def refused(self) -> bool:
+        """Whether the set cannot be adjusted for at all."""
+        return any(finding.severity == "error" for finding in self.findings)
+
 
 def reported_sets(
     plan: Plan, usable: Collection[str], limit: int

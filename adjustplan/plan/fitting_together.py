@@ -3,22 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
 
 from adjustplan.errors import did_you_mean
 from adjustplan.graph import CausalGraph
+from adjustplan.plan.misfit import Misfit
 from adjustplan.plan.places import Key
 from adjustplan.plan.schema import PlanFile
-
-
-@dataclass(frozen=True, slots=True)
-class Misfit:
-    """Something in a plan that its graph does not allow, and the key where it stands."""
-
-    code: str
-    message: str
-    remedy: str
-    key: Key
 
 
 def faults(file: PlanFile, graph: CausalGraph) -> Iterator[Misfit]:
@@ -56,6 +46,9 @@ def _unknown(file: PlanFile, graph: CausalGraph) -> Iterator[Misfit]:
     if file.analysis:
         named += [(("analysis", "columns", name), name) for name in file.analysis.columns]
         named += [(("analysis", "forms", name), name) for name in file.analysis.forms]
+        if file.analysis.imputation:
+            named += [(("analysis", "imputation", "normal"), name) for name in file.analysis.imputation.normal]
+        named += [(("analysis", "modifier"), file.analysis.modifier)] if file.analysis.modifier else []
     for key, name in named:
         if name not in graph:
             message = f"“{name}” in {'.'.join(map(str, key[:2]))} is not a variable of {file.graph}."

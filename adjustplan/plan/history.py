@@ -30,8 +30,8 @@ from adjustplan.files import read_text
 from adjustplan.plan.changes import differences
 from adjustplan.plan.places import Key, line_numbers, line_of
 from adjustplan.plan.reading import Plan
-from adjustplan.plan.schema import Table
 from adjustplan.plan.statements import Statements, fingerprint, statements
+from adjustplan.plan.table import Table
 
 Digest = Annotated[str, StringConstraints(pattern=r"^[0-9a-f]{64}$")]
 

@@ -15,9 +15,10 @@ from pydantic_core import ErrorDetails
 from adjustplan.errors import Finding, PlanError, did_you_mean
 from adjustplan.files import read_text
 from adjustplan.graph import CausalGraph, read_graph
+from adjustplan.plan.analysis_schema import Analysis
 from adjustplan.plan.fitting_together import faults
 from adjustplan.plan.places import Key, line_numbers, line_of
-from adjustplan.plan.schema import Adjustment, Analysis, PlanFile, Question, Study
+from adjustplan.plan.schema import Adjustment, PlanFile, Question, Study
 from adjustplan.study.consequences import under_design
 
 T = TypeVar("T")

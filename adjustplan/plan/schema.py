@@ -8,23 +8,17 @@ from __future__ import annotations
 
 import datetime
 import json
-from typing import Annotated, Any, Literal
+from typing import Any, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, PositiveInt, StringConstraints
+from pydantic import Field, PositiveInt
 
-from adjustplan.study import DesignName, Measure, OutcomeType, Sampling
+from adjustplan.plan.analysis_schema import Analysis
+from adjustplan.plan.stress_schema import Stress
+from adjustplan.plan.table import Name, Share, Table
+from adjustplan.study import DesignName, Sampling
 
-Name = Annotated[str, StringConstraints(min_length=1)]
-Form = Annotated[str, StringConstraints(pattern=r"^(category|linear|spline\([2-9]\))$")]
 Level = str | bool | int | float
 Moment = datetime.date | int
-Share = Annotated[float, Field(gt=0, lt=1)]
-
-
-class Table(BaseModel):
-    """A table of the plan: unknown keys are errors, and nothing changes after reading."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True, strict=True)
 
 
 class Contrast(Table):
@@ -87,19 +81,6 @@ class Adjustment(ChosenSet):
     alternative: list[ChosenSet] = Field([], description="Other sets, each with its own rationale.")
 
 
-class Analysis(Table):
-    """The model to be fitted and the data it is fitted to."""
-
-    measure: Measure = Field(description="The measure of effect that is estimated.")
-    outcome_type: OutcomeType | None = Field(None, description="What kind of outcome it is.")
-    data: Name | None = Field(None, description="A CSV or Parquet file, relative to the plan.")
-    columns: dict[str, Name] = Field({}, description="variable = column, where the two differ.")
-    forms: dict[str, Form] = Field({}, description='variable = "category" | "linear" | "spline(4)".')
-    variance: Literal["model", "robust"] | None = Field(
-        None, description="Which standard error; by default robust for a risk ratio, of the model otherwise."
-    )
-
-
 class Waiver(Table):
     """A rule of ``adjustplan check`` that the team knowingly does not follow."""
 
@@ -116,6 +97,7 @@ class PlanFile(Table):
     study: Study | None = None
     adjustment: Adjustment | None = None
     analysis: Analysis | None = None
+    stress: Stress | None = Field(None, description="How fragile the estimate is, under stated assumptions.")
     waiver: list[Waiver] = Field([], description="Rules that are waived, each with a reason.")
 
 

@@ -27,7 +27,8 @@ from typing import Any
 
 from adjustplan.graph import Arrow, CausalGraph, Variable
 from adjustplan.plan.reading import Plan
-from adjustplan.plan.schema import PlanFile, Table
+from adjustplan.plan.schema import PlanFile
+from adjustplan.plan.table import Table
 from adjustplan.plan.toml_text import collapsed, key_text, quoted, value_text
 
 PROSE = frozenset({"title", "population", "rationale", "reason", "label"})

@@ -17,6 +17,7 @@ from adjustplan.identify import Roles, SetList, Verdict, judge, list_sets, roles
 from adjustplan.plan import Plan
 from adjustplan.report.design import design_section
 from adjustplan.report.estimates import estimate_section
+from adjustplan.report.fragility import fragility_section
 from adjustplan.report.history import revision_section, waiver_section
 from adjustplan.report.markdown import code, codes, paths, prose, table, text
 from adjustplan.report.picture import Picture, draw_picture, spoken
@@ -25,6 +26,7 @@ from adjustplan.study import DESIGNS
 
 if TYPE_CHECKING:
     from adjustplan.estimate import Fit
+    from adjustplan.estimate.stress import Fragility
 
 MOST_SETS = 50
 CAUTIONS = (
@@ -47,6 +49,7 @@ class Material:
     verdicts: tuple[Verdict, ...]
     picture: Picture
     fit: Fit | None
+    fragility: Fragility | None = None
 
     @property
     def chosen(self) -> tuple[str, ...]:
@@ -100,13 +103,16 @@ def gather(plan: Plan, *, limit: int = 20) -> Material:
     proposals = [adjustment, *adjustment.alternative] if adjustment else []
     verdicts = tuple(judge(*asked, proposal.members, question.effect) for proposal in proposals)
     chosen = adjustment.members if adjustment else []
-    fitted = None
+    fitted = fragile = None
     if adjustment and plan.file.analysis and plan.file.analysis.data:
-        from adjustplan.estimate import fit
+        from adjustplan.estimate.fitting import analyse, fit_of
+        from adjustplan.estimate.stress.running import stress_analysed
 
-        fitted = fit(plan, limit=limit)
+        done = analyse(plan, limit)
+        fitted = fit_of(done)
+        fragile = stress_analysed(done) if fitted.adjusted[0].estimate is not None else None
     sets = list_sets(*asked, question.effect, limit=MOST_SETS)
-    return Material(plan, found, sets, verdicts, draw_picture(plan.graph, found, chosen), fitted)
+    return Material(plan, found, sets, verdicts, draw_picture(plan.graph, found, chosen), fitted, fragile)
 
 
 def compose(material: Material, image: str) -> str:
@@ -120,6 +126,7 @@ def compose(material: Material, image: str) -> str:
         *_sets(material),
         *_choice(material),
         *estimate_section(material.plan, material.fit),
+        *fragility_section(material.fragility),
         *waiver_section(material.plan),
         *revision_section(material.plan),
         *recommendations_section(material.plan),

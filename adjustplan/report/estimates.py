@@ -13,12 +13,28 @@ from adjustplan.report.numbers import figure, interval
 if TYPE_CHECKING:
     from adjustplan.estimate import AdjustedEstimate, Fit
 
-_MODELS = {
-    "mean difference": "linear regression",
-    "odds ratio": "logistic regression",
-    "risk ratio": "Poisson regression of the risk",
+_WAYS = {
+    "regression": "an outcome regression ({model})",
+    "standardisation": "standardisation over an outcome regression ({model})",
+    "weighting": "inverse-probability weighting",
+    "doubly robust": "the doubly robust combination of weighting and an outcome regression ({model})",
+    "stratification": "stratification (Mantel–Haenszel)",
 }
-_VARIANCES = {"model": "standard errors of the model", "robust": "robust (sandwich) standard errors"}
+_MODELS = {
+    "linear": "linear",
+    "logistic": "logistic",
+    "penalised logistic": "logistic, with Firth's penalised likelihood",
+    "log-binomial": "log-binomial",
+    "poisson": "Poisson",
+    "negative binomial": "negative binomial",
+    "cox": "Cox",
+    "conditional logistic": "conditional logistic",
+}
+_VARIANCES = {
+    "model": "standard errors of the model",
+    "robust": "robust (sandwich) standard errors",
+    "cluster": "standard errors robust to clusters",
+}
 
 
 def estimate_section(plan: Plan, fit: Fit | None) -> Iterator[str]:
@@ -37,22 +53,67 @@ def estimate_section(plan: Plan, fit: Fit | None) -> Iterator[str]:
     between = " between groups" if prefix else ""
     heads = ("Adjusted for", "Which set", "Rows", f"Crude {fit.measure}{between}", f"Adjusted {fit.measure}{between}")
     yield table(heads, rows, right=(2,))
-    yield (
-        f"95 % confidence intervals, from {_MODELS[fit.measure]} with {_VARIANCES[fit.variance]}. In each line the"
-        " crude and the adjusted estimate come from the same rows."
-    )
-    if len([result for result in fit.adjusted if result.sufficient]) > 1:
-        yield (
-            "If the graph is right, all sufficient sets estimate the same effect, up to chance"
-            + (" and to the way an odds ratio depends on its covariates." if fit.measure == "odds ratio" else ".")
-        )
+    yield f"{_method(fit)} In each line the crude and the adjusted estimate come from the same rows."
+    yield _meaning(fit)
+    yield from _ways(fit)
+    for section in fit.sections:
+        head, *lines = section.lines()
+        yield f"### {text(head)}"
+        yield "\n".join(f"    {line.strip()}" if line.startswith("  ") else line for line in lines)
     yield from _rows(fit)
-    said = dict.fromkeys([*fit.findings, *(finding for result in fit.adjusted for finding in result.findings)])
+    said = fit.said
     if said:
         yield "\n".join(
             f"- **{finding.severity.capitalize()}.** {text(f'{finding.message} {finding.remedy}')}" for finding in said
         )
     yield f"Data: {code(plan.data_path.name)}."
+
+
+def _method(fit: Fit) -> str:
+    """How the estimates were made, in a sentence."""
+    way = _WAYS[fit.way].format(model=_MODELS[fit.model])
+    if fit.intervals == "bootstrap":
+        return f"95 % confidence intervals from resampled people (bootstrap percentiles), adjusted by {way}."
+    return f"95 % confidence intervals, from {way} with {_VARIANCES[fit.variance]}."
+
+
+def _meaning(fit: Fit) -> str:
+    """Whether the estimate is conditional or marginal, and what follows."""
+    conditional = fit.way in ("regression", "stratification")
+    odd = fit.measure in ("odds ratio", "hazard ratio")
+    compared = (
+        "The estimate is *conditional*: it compares people who are alike in the covariates."
+        if conditional
+        else "The estimate is *marginal*: it compares two states of the whole population."
+    )
+    if not (odd and conditional):
+        return f"{compared} If the graph is right, all sufficient sets estimate the same effect, up to chance."
+    return (
+        f"{compared} A {fit.measure} depends on the covariates in the model even where nothing confounds"
+        " (non-collapsibility), so sufficient sets may differ a little even if the graph is right."
+    )
+
+
+def _ways(fit: Fit) -> Iterator[str]:
+    """The planned set by each way to adjust."""
+    if len(fit.ways) < 2:
+        return
+    yield "### Ways to adjust"
+    rows = [
+        (
+            text(way.way.capitalize()),
+            "conditional" if way.conditional else "marginal",
+            interval(way.estimate),
+            f"{figure(way.means[0])} and {figure(way.means[1])}" if way.means else "–",
+        )
+        for way in fit.ways
+    ]
+    yield table(("Way", "Kind of effect", fit.measure.capitalize(), "Had all been exposed, and had none"), rows)
+    if fit.measure.startswith("rate"):
+        yield (
+            "Standardised rates are averaged over the time at risk there was, weighted ones over people. Where the"
+            " exposure changes how long people are followed, the two answer different questions."
+        )
 
 
 def _headline(fit: Fit, planned: AdjustedEstimate) -> str:

@@ -11,15 +11,20 @@ from adjustplan.study.designs import (
     OutcomeType,
     Sampling,
 )
+from adjustplan.study.measures import KINDS, SCALES, MeasureKind, Scale
 
 __all__ = [
     "DESIGNS",
+    "KINDS",
     "MEASURES",
     "ODDS_RATIO_MEANS",
     "OUTCOME_TYPES",
+    "SCALES",
     "Design",
     "DesignName",
     "Measure",
+    "MeasureKind",
     "OutcomeType",
     "Sampling",
+    "Scale",
 ]

@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from adjustplan.data import Patterns, open_data, reduce_to_patterns
+from adjustplan.data import Patterns, Wanted, open_data, reduce_to_patterns
 from adjustplan.errors import DataError
 
 
@@ -24,7 +24,7 @@ def write(rows: pd.DataFrame, path: Path) -> Path:
 
 def reduced(path: Path, outcome: str, variables: dict[str, str]) -> Patterns:
     with open_data(path) as source:
-        return reduce_to_patterns(source, outcome, variables)
+        return reduce_to_patterns(source, Wanted(outcome, variables))
 
 
 def people(count: int = 500) -> pd.DataFrame:

@@ -20,7 +20,10 @@ night_work -> diabetes
 
 @pytest.fixture
 def write_plan(tmp_path: Path) -> PlanFactory:
-    """Write graph, plan and data into a folder and read the plan."""
+    """Write graph, plan and data into a folder and read the plan.
+
+    ``analysis`` holds further lines of [analysis], ``tables`` further tables.
+    """
 
     def write(
         rows: pd.DataFrame | None = None,
@@ -36,6 +39,8 @@ def write_plan(tmp_path: Path) -> PlanFactory:
         effect: str = "total",
         alternatives: tuple[tuple[str, ...], ...] = (),
         data: str = "rows.csv",
+        analysis: str = "",
+        tables: str = "",
     ) -> Plan:
         tmp_path.joinpath("study.edges").write_text(edges, encoding="utf-8")
         lines = ['title = "A study"', 'graph = "study.edges"', "[question]", 'exposure = "night_work"']
@@ -46,8 +51,10 @@ def write_plan(tmp_path: Path) -> PlanFactory:
             lines += ["[[adjustment.alternative]]", f"set = {list(alternative)}", 'rationale = "Why not."']
         lines += ["[analysis]", f'measure = "{measure}"', f'data = "{data}"']
         lines += [f'variance = "{variance}"'] if variance else []
+        lines += [analysis]
         lines += ["[analysis.columns]", *(f'{name} = "{column}"' for name, column in (columns or {}).items())]
         lines += ["[analysis.forms]", *(f'{name} = "{form}"' for name, form in (forms or {}).items())]
+        lines += [tables]
         path = tmp_path / "plan.toml"
         path.write_text("\n".join(lines), encoding="utf-8")
         if rows is not None:

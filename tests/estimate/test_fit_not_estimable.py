@@ -10,6 +10,7 @@ import pytest
 
 from adjustplan.estimate import fit
 from adjustplan.estimate.existence import separating_direction
+from adjustplan.estimate.kernel import FAMILIES
 
 EDGES = "age, site -> night_work\nage, site -> diabetes\nnight_work -> diabetes"
 RATIOS = ("odds ratio", "risk ratio")
@@ -112,12 +113,12 @@ def test_a_separating_direction_separates():
     random = np.random.default_rng(2)
     columns = np.column_stack([np.ones(50), random.normal(size=(50, 3))])
     mean = (columns @ [0.2, 1.0, -2.0, 0.5] > 0).astype(float)
-    direction = separating_direction(columns, mean, "odds ratio")
+    direction = separating_direction(columns, mean, FAMILIES["logistic"])
     gains = columns @ direction * np.where(mean == 1, 1, -1)
     assert gains.min() > -1e-6
     assert gains.max() > 0.5
     mean[np.argmax(columns @ [0.2, 1.0, -2.0, 0.5])] = 0.0
-    assert separating_direction(columns, mean, "odds ratio") is None
+    assert separating_direction(columns, mean, FAMILIES["logistic"]) is None
 
 
 def test_an_exposure_that_a_covariate_determines_is_collinear(write_plan):

@@ -47,6 +47,7 @@ def test_an_ecological_estimate_says_that_it_is_between_groups(tmp_path: Path) -
         .replace('"rate ratio"', '"mean difference"')
         .replace('"count"', '"continuous"')
         .replace("spline(4)", "linear")
+        .replace('person_time  = "person_years"\n', "")
     )
     rows = "".join(f"{i % 7},{i % 5},{10 + i % 21},{i % 7 + i % 5 + (i * 7) % 11}\n" for i in range(60))
     (study / "street_trees.csv").write_text("income,density,tree_cover,heat_admissions\n" + rows)

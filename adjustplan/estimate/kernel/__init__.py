@@ -1,0 +1,10 @@
+"""The numerical kernel: regressions on covariate patterns, and the influence each person has on an estimate.
+
+Nothing in here knows files, plans or names of variables; it sees arrays with one entry for each pattern.
+"""
+
+from adjustplan.estimate.kernel.families import FAMILIES, Family
+from adjustplan.estimate.kernel.influence import Influence, covariance
+from adjustplan.estimate.kernel.newton import Regression, regress
+
+__all__ = ["FAMILIES", "Family", "Influence", "Regression", "covariance", "regress"]
