@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from adjustplan.errors import AdjustplanWarning as AdjustplanWarning
     from adjustplan.errors import Finding as Finding
     from adjustplan.estimate import fit as fit
+    from adjustplan.estimate import stress_plan as stress_plan
     from adjustplan.graph import Arrow as Arrow
     from adjustplan.graph import CausalGraph as CausalGraph
     from adjustplan.graph import Variable as Variable
@@ -61,7 +62,7 @@ _HOMES = {
         "why_no_set",
     ),
     "adjustplan.plan": ("Plan", "read_plan"),
-    "adjustplan.estimate": ("fit",),
+    "adjustplan.estimate": ("fit", "stress_plan"),
     "adjustplan.report": ("write_document",),
 }
 _HOME = {name: home for home, names in _HOMES.items() for name in names}

@@ -12,8 +12,9 @@ from adjustplan.estimate.results import AdjustedEstimate, Estimate, WayEstimate
 
 if TYPE_CHECKING:
     from adjustplan.estimate.fitting import fit
+    from adjustplan.estimate.stress.running import stress_plan
 
-__all__ = ["AdjustedEstimate", "Estimate", "Fit", "WayEstimate", "fit"]
+__all__ = ["AdjustedEstimate", "Estimate", "Fit", "WayEstimate", "fit", "stress_plan"]
 
 
 def __getattr__(name: str) -> Any:
@@ -21,4 +22,8 @@ def __getattr__(name: str) -> Any:
         from adjustplan.estimate.fitting import fit
 
         return fit
+    if name == "stress_plan":
+        from adjustplan.estimate.stress.running import stress_plan
+
+        return stress_plan
     raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
