@@ -70,8 +70,7 @@ def looks_separated(regression: Regression) -> bool:
     if not regression.converged:
         return True
     edge = np.exp(-_FAR)
-    fitted = regression.fitted
-    at_edge = fitted.min() < edge or (regression.family.name == "logistic" and fitted.max() > 1 - edge)
+    at_edge = regression.lowest < edge or (regression.family.name == "logistic" and regression.highest > 1 - edge)
     return bool(at_edge) or bool(np.abs(regression.coefficients).max() > 2 * _FAR)
 
 

@@ -7,9 +7,9 @@ influence of each person on it, from which its standard error follows.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field, replace
-from typing import Literal
+from typing import TYPE_CHECKING, ClassVar, Literal, Protocol, TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,12 +17,18 @@ from numpy.typing import NDArray
 from adjustplan.data import Floats, Moments
 from adjustplan.errors import Finding
 from adjustplan.estimate.exposure import ExposureCoding
-from adjustplan.estimate.kernel import Influence, Regression
+from adjustplan.estimate.kernel import Family, Influence, Regression, regress
 from adjustplan.estimate.matrix import ModelMatrix
 from adjustplan.plan.analysis_schema import Model, Way, Weighting
 from adjustplan.study import KINDS, SCALES, Measure, MeasureKind, Scale
 
+if TYPE_CHECKING:
+    from adjustplan.estimate.ways.propensity import Propensity
+
 Variance = Literal["model", "robust", "cluster"]
+T = TypeVar("T")
+Picking = Callable[["Problem"], tuple[Floats, Floats, Floats]]
+"""From a block of rows to the columns, the weights and the mean outcomes of a regression."""
 
 
 @dataclass(frozen=True)
@@ -126,9 +132,42 @@ class Problem:
         with np.errstate(invalid="ignore", divide="ignore"):
             return np.asarray(self.moments.mean / self.moments.time)
 
+    in_memory: ClassVar[bool] = True
+
+    def total(self, summing: Callable[[Problem], T]) -> T:
+        """The sums over all rows of what ``summing`` makes of a block of them; here one block holds them all."""
+        return summing(self)
+
+    def regress(self, model: Picking, family: Family, start: Floats | None = None) -> Regression:
+        """Fit a regression; ``model`` gives its columns, weights and mean outcomes."""
+        columns, weight, mean = model(self)
+        return regress(columns, weight, mean, family, start)
+
     def with_moments(self, moments: Moments) -> Problem:
         """The same patterns with other people in them."""
         return replace(self, moments=moments)
+
+
+class Rows(Protocol):
+    """What a way to adjust asks of its data: a :class:`Problem` in memory, or one whose rows come in blocks."""
+
+    @property
+    def setting(self) -> Setting:
+        """The planned analysis."""
+
+    @property
+    def matrix(self) -> ModelMatrix:
+        """The model matrix; without lines where the rows come in blocks."""
+
+    @property
+    def in_memory(self) -> bool:
+        """Whether the arrays of all rows are at hand."""
+
+    def total(self, summing: Callable[[Problem], T]) -> T:
+        """The sums over all rows of what ``summing`` makes of a block of them."""
+
+    def regress(self, model: Picking, family: Family, start: Floats | None = None) -> Regression:
+        """Fit a regression."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -142,11 +181,13 @@ class Solution:
     means : tuple of (float, float) or None
         The mean outcome had everybody been exposed, and had everybody been at the reference level (marginal ways).
     influence : Influence or None
-        Of each person on ``value``; None where it was not asked for.
-    mean_influence : tuple of (Influence, Influence) or None
-        Of each person on the two means.
+        Of each person on ``value``; None where it was not asked for, or the rows come in blocks.
+    rule : function of a Problem, or None
+        The influence of the people of any block of rows.
     regression : Regression or None
         The outcome regression.
+    propensity : Propensity or None
+        The models of the exposure.
     balance : array of float or None, shape (patterns,)
         The weights, where there are any, of the people at the two levels.
     scores : array of float or None, shape (patterns,)
@@ -160,9 +201,18 @@ class Solution:
     value: float
     means: tuple[float, float] | None = None
     influence: Influence | None = None
-    mean_influence: tuple[Influence, Influence] | None = None
+    rule: Callable[[Problem], Influence] | None = None
     regression: Regression | None = None
+    propensity: Propensity | None = None
     balance: Floats | None = None
     scores: Floats | None = None
     standard_error: float | None = None
     findings: tuple[Finding, ...] = ()
+
+    def showing(self, balance: Floats, scores: Floats) -> Solution:
+        """The same with the weights and the probabilities of all rows."""
+        return replace(self, balance=balance, scores=scores)
+
+    def ruled(self, rule: Callable[[Problem], Influence], rows: Rows) -> Solution:
+        """The same with each person's influence."""
+        return replace(self, rule=rule, influence=rule(rows) if isinstance(rows, Problem) else None)

@@ -26,7 +26,7 @@ from adjustplan.estimate.kernel import Regression
 from adjustplan.estimate.not_estimable import NotEstimableError
 from adjustplan.estimate.problem import Problem, Solution
 from adjustplan.estimate.ways import doubly_robust, regression, solve, standardisation, weighting
-from adjustplan.estimate.ways.propensity import level_weights
+from adjustplan.estimate.ways.propensity import propensity
 
 Counts = NDArray[np.int64]
 Estimate = Callable[[Counts], float]
@@ -160,8 +160,7 @@ def _start(problem: Problem) -> _Start:
         with np.errstate(all="ignore"):
             exposure = None
             if problem.setting.way in ("weighting", "doubly robust"):
-                first, second = level_weights(problem)
-                exposure = (first.regression, second.regression)
+                exposure = propensity(problem).regressions
             found = solve(problem).regression
     except _BROKEN:
         return _Start()
@@ -188,9 +187,9 @@ def _solved(problem: Problem, start: _Start) -> Solution:
     if way == "standardisation":
         return standardisation.solve(problem, start.outcome)
     if way == "weighting":
-        return weighting.solve(problem, level_weights(problem, start.exposure))
+        return weighting.solve(problem, start.exposure)
     if way == "doubly robust":
-        return doubly_robust.solve(problem, start.outcome, level_weights(problem, start.exposure))
+        return doubly_robust.solve(problem, start.outcome, start.exposure)
     return solve(problem)
 
 
@@ -280,5 +279,4 @@ def _at_edge(fitted: Regression) -> bool:
 
     Nearer to the middle every digit of a step is right, and under separation steps do not get shorter.
     """
-    means = fitted.fitted
-    return bool(means.min() < _EDGE or (fitted.family.name == "logistic" and means.max() > 1 - _EDGE))
+    return bool(fitted.lowest < _EDGE or (fitted.family.name == "logistic" and fitted.highest > 1 - _EDGE))

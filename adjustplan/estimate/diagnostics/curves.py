@@ -19,7 +19,6 @@ from adjustplan.estimate.not_estimable import NotEstimableError
 from adjustplan.estimate.problem import Problem, Solution
 from adjustplan.estimate.standard_errors import dispersion, joint_covariance
 from adjustplan.estimate.ways import doubly_robust, regression, standardisation, weighting
-from adjustplan.estimate.ways.propensity import level_weights
 
 CURVE = "spline(4)"
 FEWEST_VALUES = 6
@@ -53,8 +52,9 @@ def departure(
     matrix, basis = _curved(patterns, problem, name)
     curved = replace(problem, matrix=matrix)
     if problem.setting.way == "weighting":
-        parts = level_weights(curved)
-        fitted, value = parts[0].regression, weighting.solve(curved, parts).value
+        weighted = weighting.solve(curved)
+        assert weighted.propensity is not None
+        fitted, value = weighted.propensity.regressions[0], weighted.value
         places = _places(tuple(np.array(matrix.variables)[matrix.covariates]), name)
         covariance = fitted.bread[np.ix_(places, places)]
     else:

@@ -40,7 +40,7 @@ from adjustplan.estimate.modelling import Modelled, pose
 from adjustplan.estimate.not_estimable import NotEstimableError
 from adjustplan.estimate.problem import Problem, Setting, Solution
 from adjustplan.estimate.row_models import has_own_interval
-from adjustplan.estimate.ways.propensity import level_weights
+from adjustplan.estimate.ways.propensity import propensity
 
 __all__ = ["Absent", "Diagnostics", "NamedTest", "WeightDiagnostics", "diagnose"]
 
@@ -214,7 +214,7 @@ def _overlap(case: _Case) -> ScoreOverlap:
     _needs_levels(case)
     score = None if case.solution is None else case.solution.scores
     if score is None:
-        score = level_weights(case.problem)[0].probability
+        score = propensity(case.problem).weights(case.problem)[0].probability
     return score_overlap(score, *case.groups, case.people)
 
 

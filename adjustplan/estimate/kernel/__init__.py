@@ -4,7 +4,18 @@ Nothing in here knows files, plans or names of variables; it sees arrays with on
 """
 
 from adjustplan.estimate.kernel.families import FAMILIES, Family
-from adjustplan.estimate.kernel.influence import Influence, covariance
-from adjustplan.estimate.kernel.newton import Regression, regress
+from adjustplan.estimate.kernel.influence import Influence, cluster_sums, covariance
+from adjustplan.estimate.kernel.newton import Regression, Sums, iterate, regress, sums_at
 
-__all__ = ["FAMILIES", "Family", "Influence", "Regression", "covariance", "regress"]
+__all__ = [
+    "FAMILIES",
+    "Family",
+    "Influence",
+    "Regression",
+    "Sums",
+    "cluster_sums",
+    "covariance",
+    "iterate",
+    "regress",
+    "sums_at",
+]

@@ -60,14 +60,10 @@ def covariance(parts: Sequence[Influence], moments: Moments, cluster: NDArray[np
     -------
     array of float, shape (estimates, estimates)
     """
-    constant = np.column_stack([part.constant for part in parts])
-    outcome = np.column_stack([part.outcome for part in parts])
-    time = np.column_stack([part.time for part in parts])
     if cluster is not None:
-        each = constant + outcome * _known(moments.mean) + time * _known(moments.time)
-        each = each * moments.weight[:, None]
-        sums = np.column_stack([np.bincount(cluster, weights=column) for column in each.T])
+        sums = cluster_sums(parts, moments, cluster, int(cluster.max()) + 1)
         return np.asarray(sums.T @ sums)
+    constant, outcome, time = _stacked(parts)
     middle = constant + outcome * _known(moments.mean_squared) + time * _known(moments.time_squared)
     total = (middle * moments.square[:, None]).T @ middle
     total = total + (outcome * moments.outcome_outcome[:, None]).T @ outcome
@@ -75,6 +71,22 @@ def covariance(parts: Sequence[Influence], moments: Moments, cluster: NDArray[np
         crossed = (outcome * moments.outcome_time[:, None]).T @ time
         total = total + crossed + crossed.T + (time * moments.time_time[:, None]).T @ time
     return np.asarray(total)
+
+
+def cluster_sums(parts: Sequence[Influence], moments: Moments, cluster: NDArray[np.intp], clusters: int) -> Floats:
+    """The sums of influences within each cluster, shape (clusters, estimates); they add up over blocks of rows."""
+    constant, outcome, time = _stacked(parts)
+    each = constant + outcome * _known(moments.mean) + time * _known(moments.time)
+    each = each * moments.weight[:, None]
+    return np.column_stack([np.bincount(cluster, weights=column, minlength=clusters) for column in each.T])
+
+
+def _stacked(parts: Sequence[Influence]) -> tuple[Floats, Floats, Floats]:
+    return (
+        np.column_stack([part.constant for part in parts]),
+        np.column_stack([part.outcome for part in parts]),
+        np.column_stack([part.time for part in parts]),
+    )
 
 
 def _known(values: Floats) -> Floats:

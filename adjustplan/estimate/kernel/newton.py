@@ -1,4 +1,4 @@
-"""Fitting a regression to covariate patterns by Newton's method (Fisher scoring).
+"""Fitting a regression by Newton's method (Fisher scoring), from sums over covariate patterns or over blocks of rows.
 
 At coefficients b the score is Σ x s w t (m - μ) and the information Σ x x' s μ' w t, with s = μ'/V; w t is the weight
 of a pattern (people, times their sampling weights, times their time at risk) and m its mean outcome per unit of time. A
@@ -6,13 +6,18 @@ step solves the information for the score; one that would lower the likelihood, 
 Near the solution every step doubles the number of right digits, so the iterations stop when a step no longer changes
 anything that could be seen, and then the estimate is right to rounding.
 
-A linear regression needs no iteration; it is solved by a QR decomposition around the mean, which keeps all the digits
-that the data have.
+All that is ever asked of the data is a :class:`Sums`. They add up over any division of the rows, so that rows may come
+in blocks, or be summed where they are; only some hundred numbers come back for each step.
+
+A linear regression needs no iteration. Where its rows are in memory it is solved by a QR decomposition around the mean,
+which keeps all the digits that the data have; otherwise by its sums.
 """
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 
@@ -26,34 +31,115 @@ _MOST_HALVINGS = 30
 
 @dataclass(frozen=True, eq=False)
 class Regression:
-    """A regression on covariate patterns.
+    """A regression.
 
     Attributes
     ----------
     family : Family
     coefficients : array of float, shape (parameters,)
     bread : array of float, shape (parameters, parameters)
-        Inverse of the observed information at the fit (Efron and Hinkley 1978, Biometrika 65:457).
+        Inverse of the information at the fit (the observed one, which a sandwich needs).
     fitted : array of float, shape (patterns,)
-        Fitted means (per unit of time).
-    gain : array of float, shape (patterns,)
-        s = μ'/V: a person's score is x s (y - t μ). It is 1 for the linear, logistic and Poisson families.
+        Fitted means (per unit of time); empty where the rows were not in memory.
     converged : bool
         False when the iterations ended without settling or broke down.
     steps : int
+    lowest, highest : float
+        Of the fitted means.
     """
 
     family: Family
     coefficients: Floats
     bread: Floats
     fitted: Floats
-    gain: Floats
     converged: bool
     steps: int
+    lowest: float
+    highest: float
+
+    def means(self, columns: Floats) -> Floats:
+        """The fitted means of rows of a model matrix."""
+        return self.family.mean(columns @ self.coefficients)
+
+    def gain(self, fitted: Floats) -> Floats:
+        """s = μ'/V of rows with these fitted means: a person's score is x s (y - t μ)."""
+        # 1 for the linear, logistic and Poisson families, whose links are canonical
+        return 1 / (1 - fitted) if self.family.name == "log-binomial" else np.ones(len(fitted))
+
+
+class Sums(NamedTuple):
+    """What a step of the iterations needs of the data.
+
+    Attributes
+    ----------
+    score : array of float, shape (parameters,)
+    information, slope : array of float, shape (parameters, parameters)
+        The expected information, and the observed one: minus the derivative of the score.
+    likelihood : float
+        The quasi-likelihood; minus infinity where a mean is none the family allows.
+    lowest, highest : float
+        Of the fitted means.
+    weight, total : float
+        Sum of the weights, and of the weighted outcomes.
+    """
+
+    score: Floats
+    information: Floats
+    slope: Floats
+    likelihood: float
+    lowest: float
+    highest: float
+    weight: float
+    total: float
+
+    def __add__(self, other: Sums) -> Sums:  # type: ignore[override]
+        return Sums(
+            self.score + other.score,
+            self.information + other.information,
+            self.slope + other.slope,
+            self.likelihood + other.likelihood,
+            min(self.lowest, other.lowest),
+            max(self.highest, other.highest),
+            self.weight + other.weight,
+            self.total + other.total,
+        )
+
+
+Summing = Callable[[Floats], Sums]
+"""From coefficients to the sums over all rows."""
+
+
+def sums_at(columns: Floats, weight: Floats, mean: Floats, family: Family, coefficients: Floats) -> Sums:
+    """The sums over some patterns or rows; those without weight are passed over."""
+    seen = weight > 0
+    if not seen.all():
+        columns, weight, mean = columns[seen], weight[seen], mean[seen]
+    predictor = columns @ coefficients
+    fitted = family.mean(predictor)
+    lowest, highest = (float(fitted.min()), float(fitted.max())) if len(fitted) else (np.inf, -np.inf)
+    slope = family.slope(predictor)
+    gain = slope / family.variance(fitted)
+    weighted = weight * gain
+    information = (columns * (weighted * slope)[:, None]).T @ columns
+    observed = information
+    if family.name == "log-binomial":
+        # the slope of the score itself, not its expectation: a sandwich needs it where the mean is modelled wrongly
+        observed = (columns * (weight * fitted * (1 - mean) * gain**2)[:, None]).T @ columns
+    likelihood = -np.inf if highest >= family.highest else float(weight @ family.likelihood(mean, fitted))
+    return Sums(
+        columns.T @ (weighted * (mean - fitted)),
+        information,
+        observed,
+        likelihood if np.isfinite(likelihood) else -np.inf,
+        lowest,
+        highest,
+        float(weight.sum()),
+        float(weight @ mean),
+    )
 
 
 def regress(columns: Floats, weight: Floats, mean: Floats, family: Family, start: Floats | None = None) -> Regression:
-    """Fit a regression.
+    """Fit a regression to patterns in memory.
 
     Parameters
     ----------
@@ -67,62 +153,76 @@ def regress(columns: Floats, weight: Floats, mean: Floats, family: Family, start
     """
     if family.name == "linear":
         return _least_squares(columns, weight, mean, family)
-    with np.errstate(all="ignore"):
-        return _iterate(columns, weight, mean, family, start)
-
-
-def _iterate(columns: Floats, weight: Floats, mean: Floats, family: Family, start: Floats | None) -> Regression:
-    seen = weight > 0
-    outcome = np.where(seen, mean, 0.5)
     if start is None:
         start = np.zeros(columns.shape[1])
-        start[0] = float(family.link(np.average(outcome, weights=weight)))
-    coefficients = start
-    likelihood = _likelihood(columns @ coefficients, outcome, weight, family)
-    converged, bread, step = False, np.full((columns.shape[1],) * 2, np.nan), 0
-    for step in range(1, _MOST_STEPS + 1):  # noqa: B007 — counted for the caller
-        predictor = columns @ coefficients
-        fitted, slope = family.mean(predictor), family.slope(predictor)
-        gain = slope / family.variance(fitted)
-        score = columns.T @ (weight * gain * (outcome - fitted))
-        information = (columns * (weight * gain * slope)[:, None]).T @ columns
+        start[0] = float(family.link(np.average(np.where(weight > 0, mean, 0.5), weights=weight)))
+    found = iterate(lambda at: sums_at(columns, weight, mean, family, at), family, columns.shape[1], start)
+    with np.errstate(all="ignore"):
+        fitted = found.means(columns)
+    return Regression(
+        family,
+        found.coefficients,
+        found.bread,
+        fitted,
+        found.converged and bool(np.isfinite(fitted).all()),
+        found.steps,
+        found.lowest,
+        found.highest,
+    )
+
+
+def iterate(summing: Summing, family: Family, parameters: int, start: Floats | None = None) -> Regression:
+    """Fit a regression by its sums alone; ``fitted`` is empty.
+
+    Parameters
+    ----------
+    summing : function of an array of float, shape (parameters,)
+        The sums over all rows at these coefficients.
+    family : Family
+    parameters : int
+    start : array of float, shape (parameters,), optional
+    """
+    with np.errstate(all="ignore"):
+        return _iterate(summing, family, parameters, start)
+
+
+def _iterate(summing: Summing, family: Family, parameters: int, start: Floats | None) -> Regression:
+    if start is None:
+        start = np.zeros(parameters)
+        if family.name != "linear":
+            # any point will do to learn the crude mean
+            whole = summing(start if family.highest == np.inf else start - (np.arange(parameters) == 0))
+            start[0] = float(family.link(np.array([whole.total / whole.weight]))[0])
+    coefficients, sums = start, summing(start)
+    converged, step, halvings = False, 0, 0
+    while step < _MOST_STEPS:
+        step += 1
         try:
-            move = np.linalg.solve(information, score)
+            move = np.asarray(np.linalg.solve(sums.information, sums.score), dtype=np.float64)
         except np.linalg.LinAlgError:
             break
         if not np.isfinite(move).all():
             break
-        share, halvings = 1.0, 0
-        after = _likelihood(columns @ (coefficients + move), outcome, weight, family)
-        while not after >= likelihood - 1e-9 * abs(likelihood) and halvings < _MOST_HALVINGS:
-            share, halvings = share / 2, halvings + 1
-            after = _likelihood(columns @ (coefficients + share * move), outcome, weight, family)
+        halvings, after = 0, summing(coefficients + move)
+        while not after.likelihood >= sums.likelihood - 1e-9 * abs(sums.likelihood) and halvings < _MOST_HALVINGS:
+            move, halvings = move / 2, halvings + 1
+            after = summing(coefficients + move)
         if halvings == _MOST_HALVINGS:
             break
-        coefficients, likelihood = coefficients + share * move, after
-        if share == 1.0 and np.abs(move).max() <= _SETTLED * (1 + np.abs(coefficients).max()):
+        coefficients, sums = coefficients + move, after
+        if not halvings and np.abs(move).max() <= _SETTLED * (1 + np.abs(coefficients).max()):
             converged = True
             break
-    predictor = columns @ coefficients
-    fitted, slope = family.mean(predictor), family.slope(predictor)
-    gain = slope / family.variance(fitted) if family.name == "log-binomial" else np.ones(len(fitted))
-    # the slope of the score itself, not its expectation: a sandwich needs it where the mean is modelled wrongly
-    turn = fitted * (1 - outcome) * gain**2 if family.name == "log-binomial" else slope
+        if family.name == "linear" and not halvings:
+            converged = step > 1  # the second step only mends the rounding of the first
+            if converged:
+                break
     try:
-        bread = np.linalg.inv((columns * (weight * turn)[:, None]).T @ columns)
+        bread = np.asarray(np.linalg.inv(sums.slope), dtype=np.float64)
     except np.linalg.LinAlgError:
-        converged = False
-    settled = converged and all(np.isfinite(part).all() for part in (coefficients, bread, fitted, gain))
-    return Regression(family, coefficients, bread, fitted, gain, settled, step)
-
-
-def _likelihood(predictor: Floats, outcome: Floats, weight: Floats, family: Family) -> float:
-    """The quasi-likelihood; minus infinity where a mean is none the family allows."""
-    fitted = family.mean(predictor)
-    if fitted.max() >= family.highest and family.name == "log-binomial":
-        return -np.inf
-    value = float(weight @ family.likelihood(outcome, fitted))
-    return value if np.isfinite(value) else -np.inf
+        bread, converged = np.full((parameters,) * 2, np.nan), False
+    settled = converged and bool(np.isfinite(coefficients).all() and np.isfinite(bread).all())
+    return Regression(family, coefficients, bread, np.empty(0), settled, step, sums.lowest, sums.highest)
 
 
 def _least_squares(columns: Floats, weight: Floats, mean: Floats, family: Family) -> Regression:
@@ -136,4 +236,5 @@ def _least_squares(columns: Floats, weight: Floats, mean: Floats, family: Family
     fitted = columns @ coefficients + centre
     coefficients = coefficients + centre * (np.arange(len(coefficients)) == 0)
     converged = bool(np.isfinite(coefficients).all() and np.isfinite(inverse).all())
-    return Regression(family, coefficients, inverse @ inverse.T, fitted, np.ones(len(fitted)), converged, 1)
+    bread = inverse @ inverse.T
+    return Regression(family, coefficients, bread, fitted, converged, 1, float(fitted.min()), float(fitted.max()))

@@ -10,11 +10,11 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from types import MappingProxyType
 
-from adjustplan.estimate.problem import Problem, Solution
+from adjustplan.estimate.problem import Rows, Solution
 from adjustplan.estimate.ways import doubly_robust, regression, standardisation, strata, weighting
 from adjustplan.plan.analysis_schema import Way
 
-_SOLVERS: Mapping[Way, Callable[[Problem], Solution]] = MappingProxyType(
+_SOLVERS: Mapping[Way, Callable[[Rows], Solution]] = MappingProxyType(
     {
         "regression": regression.solve,
         "standardisation": standardisation.solve,
@@ -23,7 +23,7 @@ _SOLVERS: Mapping[Way, Callable[[Problem], Solution]] = MappingProxyType(
         "stratification": strata.solve,
     }
 )
-_INFLUENCES: Mapping[Way, Callable[[Problem, Solution], Solution]] = MappingProxyType(
+_INFLUENCES: Mapping[Way, Callable[[Rows, Solution], Solution]] = MappingProxyType(
     {
         "regression": regression.with_influence,
         "standardisation": standardisation.with_influence,
@@ -44,11 +44,11 @@ CONDITIONAL: Mapping[Way, bool] = MappingProxyType(
 """Whether a way compares people who are alike in the covariates, rather than two states of the population."""
 
 
-def solve(problem: Problem) -> Solution:
+def solve(rows: Rows) -> Solution:
     """The effect, without its error."""
-    return _SOLVERS[problem.setting.way](problem)
+    return _SOLVERS[rows.setting.way](rows)
 
 
-def with_influence(problem: Problem, found: Solution) -> Solution:
+def with_influence(rows: Rows, found: Solution) -> Solution:
     """The same with what its standard error needs."""
-    return _INFLUENCES[problem.setting.way](problem, found)
+    return _INFLUENCES[rows.setting.way](rows, found)

@@ -15,69 +15,94 @@ from adjustplan.data import Floats
 from adjustplan.estimate.kernel import Influence, Regression
 from adjustplan.estimate.kernel.influence import of_residual
 from adjustplan.estimate.not_estimable import NotEstimableError
-from adjustplan.estimate.problem import Problem, Solution
+from adjustplan.estimate.problem import Problem, Rows, Solution
 from adjustplan.estimate.ways.marginal import compare, influence_on
-from adjustplan.estimate.ways.propensity import LevelWeights, covariate_columns, level_weights, weight_influence
-from adjustplan.estimate.ways.regression import outcome_regression
+from adjustplan.estimate.ways.propensity import Propensity, covariate_columns, propensity, weight_influence
+from adjustplan.estimate.ways.regression import of_score, outcome_regression
 
 
 def solve(
-    problem: Problem, start: Regression | None = None, parts: tuple[LevelWeights, LevelWeights] | None = None
+    rows: Rows, start: Regression | None = None, exposure: tuple[Regression, Regression] | None = None
 ) -> Solution:
     """Fit both models and combine them."""
-    if problem.setting.kind == "rate":
+    if rows.setting.kind == "rate":
         message = "Rates have no doubly robust estimate here: time at risk follows from the exposure too."
         raise NotEstimableError("estimate-way-measure", message, "Adjust a rate another way.")
-    parts, regression = parts or level_weights(problem), outcome_regression(problem, start)
-    ends = (problem.matrix.exposed, problem.matrix.reference)
-    means = tuple(_mean(problem, regression, end, part) for end, part in zip(ends, parts, strict=True))
-    both = (means[0], means[1])
-    balance = parts[0].weight + parts[1].weight
-    return Solution(
-        compare(both, problem.setting), both, regression=regression, balance=balance, scores=parts[0].probability
-    )
+    models, regression = propensity(rows, exposure), outcome_regression(rows, start)
+
+    def combined(block: Problem) -> Floats:
+        people = _people(block)
+        sums = [people.sum()]
+        for end, inverse, _ in _sides(block, models):
+            predicted = regression.means(end)
+            sums.append(people @ (predicted + inverse * (np.nan_to_num(block.mean) - predicted)))
+        return np.array(sums)
+
+    whole, exposed, reference = rows.total(combined)
+    means = (float(exposed / whole), float(reference / whole))
+    found = Solution(compare(means, rows.setting), means, regression=regression, propensity=models)
+    if not isinstance(rows, Problem):
+        return found
+    first, second = models.weights(rows)
+    return found.showing(first.weight + second.weight, first.probability)
 
 
-def with_influence(problem: Problem, found: Solution) -> Solution:
-    """The same with each person's influence on the two means and the effect."""
-    assert found.means is not None
-    assert found.regression is not None
-    parts = level_weights(problem)
-    exposed = _on_mean(problem, found.regression, problem.matrix.exposed, parts[0], found.means[0])
-    reference = _on_mean(problem, found.regression, problem.matrix.reference, parts[1], found.means[1])
-    both = (exposed, reference)
-    influence = influence_on(found.means, both, problem.setting.scale)
-    return Solution(found.value, found.means, influence, both, found.regression, found.balance, found.scores)
+def with_influence(rows: Rows, found: Solution) -> Solution:
+    """The same with each person's influence on the effect."""
+    means, regression, models = found.means, found.regression, found.propensity
+    assert means is not None
+    assert regression is not None
+    assert models is not None
+    whole = float(rows.total(lambda block: np.array([_people(block).sum()]))[0])
+
+    def outcome_gradients(block: Problem) -> Floats:
+        people = _people(block)
+        return np.array(
+            [
+                (people * (1 - inverse) * regression.family.slope(end @ regression.coefficients)) @ end
+                for end, inverse, _ in _sides(block, models)
+            ]
+        )
+
+    def exposure_gradients(block: Problem) -> Floats:
+        people, columns = _people(block), covariate_columns(block)
+        return np.array(
+            [
+                (people * slope * (np.nan_to_num(block.mean) - regression.means(end))) @ columns
+                for end, _, slope in _sides(block, models)
+            ]
+        )
+
+    by_outcome, by_exposure = rows.total(outcome_gradients) / whole, rows.total(exposure_gradients) / whole
+
+    def rule(block: Problem) -> Influence:
+        parts, both = models.weights(block), []
+        for place, (end, inverse, _) in enumerate(_sides(block, models)):
+            predicted = regression.means(end)
+            nothing = np.zeros(len(predicted))
+            own = Influence((predicted - means[place]) / whole, nothing, nothing)
+            own = own + of_residual(inverse / whole, predicted)
+            own = own + of_score(block, regression, regression.bread @ by_outcome[place])
+            if not block.setting.weighting.known:
+                own = own + weight_influence(block, models.regressions[place], parts[place], by_exposure[place])
+            both.append(own)
+        return influence_on(means, (both[0], both[1]), block.setting.scale)
+
+    return found.ruled(rule, rows)
 
 
-def _inverse(problem: Problem, part: LevelWeights) -> tuple[Floats, Floats]:
-    """Weights and their slopes without the stabilising factor, which would not cancel here."""
-    if not problem.setting.weighting.stabilised:
-        return part.weight, part.slope
-    people = problem.moments.weight
-    share = float(people[part.here].sum() / people.sum())
-    return part.weight / share, part.slope / share
+def _people(block: Problem) -> Floats:
+    return np.where(block.moments.weight > 0, block.moments.weight, 0.0)
 
 
-def _mean(problem: Problem, regression: Regression, end: Floats, part: LevelWeights) -> float:
-    people = problem.moments.weight
-    predicted = regression.family.mean(end @ regression.coefficients)
-    inverse, _ = _inverse(problem, part)
-    error = inverse * (np.nan_to_num(problem.mean) - predicted)
-    return float(people @ (predicted + error) / people.sum())
+def _sides(block: Problem, models: Propensity) -> list[tuple[Floats, Floats, Floats]]:
+    """For both levels: the model matrix as if all had it, and inverse probabilities with their slopes.
 
-
-def _on_mean(problem: Problem, regression: Regression, end: Floats, part: LevelWeights, mean: float) -> Influence:
-    people = problem.moments.weight
-    total = float(people.sum())
-    predictor = end @ regression.coefficients
-    predicted = regression.family.mean(predictor)
-    inverse, slope = _inverse(problem, part)
-    own = Influence((predicted - mean) / total, 0.0 * inverse, 0.0 * inverse) + of_residual(inverse / total, predicted)
-    gradient = (people * (1 - inverse) * regression.family.slope(predictor)) @ end / total
-    factor = (problem.matrix.columns @ (regression.bread @ gradient)) * regression.gain
-    influence = own + of_residual(factor, regression.fitted)
-    if problem.setting.weighting.known:
-        return influence
-    moved = people * slope * (np.nan_to_num(problem.mean) - predicted) / total
-    return influence + weight_influence(problem, part, moved @ covariate_columns(problem))
+    Without the stabilising share, which would not cancel here.
+    """
+    ends = (block.matrix.exposed, block.matrix.reference)
+    shares = models.shares if models.stabilised else (1.0, 1.0)
+    return [
+        (end, part.weight / share, part.slope / share)
+        for end, part, share in zip(ends, models.weights(block), shares, strict=True)
+    ]

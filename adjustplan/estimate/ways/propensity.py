@@ -11,16 +11,19 @@ With more than two levels each of the two compared has a regression of its own a
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Callable
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from adjustplan.data import Floats
 from adjustplan.estimate.existence import looks_separated, separating_direction
-from adjustplan.estimate.kernel import FAMILIES, Influence, Regression, regress
+from adjustplan.estimate.kernel import FAMILIES, Influence, Regression
 from adjustplan.estimate.not_estimable import NotEstimableError
-from adjustplan.estimate.problem import Problem
+from adjustplan.estimate.problem import Problem, Rows
+
+_LOGISTIC = FAMILIES["logistic"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -37,112 +40,147 @@ class LevelWeights:
         0 for those who do not have it.
     slope : array of float, shape (patterns,)
         Derivative of the weight by the linear predictor; 0 where it was truncated.
-    regression : Regression
     """
 
     here: NDArray[np.bool_]
     probability: Floats
     weight: Floats
     slope: Floats
-    regression: Regression
 
 
-def level_weights(
-    problem: Problem, start: tuple[Regression, Regression] | None = None
-) -> tuple[LevelWeights, LevelWeights]:
-    """The weights of the exposed and of the reference level.
+@dataclass(frozen=True, eq=False)
+class Propensity:
+    """The models of the two levels, and what turns their probabilities into weights.
+
+    Attributes
+    ----------
+    regressions : tuple of Regression
+        Of having the exposed level, and of having the reference level.
+    shares : tuple of float
+        Of all people who have each level.
+    stabilised : bool
+        Whether weights are multiplied by these shares.
+    limits : tuple of (float, float) or None
+        Where weights are truncated.
+    """
+
+    regressions: tuple[Regression, Regression]
+    shares: tuple[float, float]
+    stabilised: bool
+    limits: tuple[float, float] | None = None
+
+    def weights(self, block: Problem) -> tuple[LevelWeights, LevelWeights]:
+        """The weights of a block of rows, for the exposed and the reference level."""
+        columns = covariate_columns(block)
+        parts = []
+        for place, here in enumerate((block.is_exposed, block.is_reference)):
+            probability = self.regressions[place].means(columns)
+            factor = self.shares[place] if self.stabilised else 1.0
+            with np.errstate(divide="ignore", over="ignore"):
+                weight = np.where(here, factor / probability, 0.0)
+            slope = -weight * (1 - probability)
+            if self.limits is not None:
+                beyond = here & ((weight < self.limits[0]) | (weight > self.limits[1]))
+                weight = np.where(here, np.clip(weight, *self.limits), 0.0)
+                slope = np.where(beyond, 0.0, slope)
+            parts.append(LevelWeights(here, probability, weight, slope))
+        return parts[0], parts[1]
+
+
+def propensity(rows: Rows, start: tuple[Regression, Regression] | None = None) -> Propensity:
+    """Fit the models of the exposed and of the reference level.
 
     Raises
     ------
     NotEstimableError
         If the exposure has no levels, or some people could not have had one of the two (positivity).
     """
-    setting = problem.setting
-    if not (problem.is_exposed.any() and problem.is_reference.any()):
+    setting = rows.setting
+    people, exposed, reference, others = rows.total(_counted)
+    if not (exposed > 0 and reference > 0):
         message = f"“{setting.exposure}” has no levels, which {setting.way} needs."
         remedy = f'State {setting.exposure} = "category" or "cut(…)" in [analysis.forms], or adjust another way.'
         raise NotEstimableError("estimate-no-levels", message, remedy)
-    people = problem.moments.weight
-    exposed = _regress(problem, problem.is_exposed, None if start is None else start[0])
-    binary = bool((problem.is_exposed | problem.is_reference)[people > 0].all())
-    reference = (
-        _mirrored(exposed) if binary else _regress(problem, problem.is_reference, None if start is None else start[1])
+    first = _regress(rows, lambda block: block.is_exposed, None if start is None else start[0])
+    second = (
+        replace(first, coefficients=-first.coefficients)
+        if others == 0
+        else _regress(rows, lambda block: block.is_reference, None if start is None else start[1])
     )
-    parts = [
-        _raw(problem, problem.is_exposed, exposed, stabilised=setting.weighting.stabilised),
-        _raw(problem, problem.is_reference, reference, stabilised=setting.weighting.stabilised),
-    ]
-    if setting.weighting.truncate is not None:
-        share = setting.weighting.truncate
-        weight = parts[0].weight + parts[1].weight
-        low, high = _quantiles(weight, np.where(weight > 0, people, 0.0), (share, 1 - share))
-        parts = [_truncated(part, low, high) for part in parts]
-    return parts[0], parts[1]
+    shares = (float(exposed / people), float(reference / people))
+    found = Propensity((first, second), shares, setting.weighting.stabilised)
+    if setting.weighting.truncate is None:
+        return found
+    share = setting.weighting.truncate
+    return replace(found, limits=_quantiles(rows, found, (share, 1 - share)))
 
 
-def covariate_columns(problem: Problem) -> Floats:
+def covariate_columns(block: Problem) -> Floats:
     """The model matrix of the covariates alone."""
-    return problem.matrix.columns[:, problem.matrix.covariates]
+    return block.matrix.columns[:, block.matrix.covariates]
 
 
-def weight_influence(problem: Problem, part: LevelWeights, gradient: Floats) -> Influence:
+def weight_influence(block: Problem, regression: Regression, part: LevelWeights, gradient: Floats) -> Influence:
     """What estimating the weights adds to an influence whose estimate moves by ``gradient`` with the coefficients."""
-    columns = covariate_columns(problem)
-    residual = part.here - part.probability
-    constant = (columns @ (part.regression.bread @ gradient)) * residual
-    return Influence(constant, 0.0 * constant, 0.0 * constant)
+    constant = (covariate_columns(block) @ (regression.bread @ gradient)) * (part.here - part.probability)
+    return Influence(constant, np.zeros(len(constant)), np.zeros(len(constant)))
 
 
-def _regress(problem: Problem, here: NDArray[np.bool_], start: Regression | None) -> Regression:
-    columns = covariate_columns(problem)
-    share = here.astype(np.float64)
-    weight = problem.moments.weight
-    at = None if start is None else start.coefficients
-    regression = regress(columns, weight, share, FAMILIES["logistic"], at)
+def _counted(block: Problem) -> Floats:
+    """People in all, at the two levels, and at neither."""
+    weight = np.where(block.moments.weight > 0, block.moments.weight, 0.0)
+    neither = ~(block.is_exposed | block.is_reference)
+    return np.array([weight.sum(), *(weight[here].sum() for here in (block.is_exposed, block.is_reference, neither))])
+
+
+def _regress(rows: Rows, having: Callable[[Problem], NDArray[np.bool_]], start: Regression | None) -> Regression:
+    def model(block: Problem) -> tuple[Floats, Floats, Floats]:
+        return covariate_columns(block), block.moments.weight, having(block).astype(np.float64)
+
+    regression = rows.regress(model, _LOGISTIC, None if start is None else start.coefficients)
     if looks_separated(regression):
-        seen = weight > 0
-        if separating_direction(columns[seen], share[seen], FAMILIES["logistic"]) is not None:
-            message = (
-                f"In some groups of covariates everybody, or nobody, has one level of “{problem.setting.exposure}”"
-            )
-            remedy = "Restrict the population to people who could have had either, or coarsen the covariates."
-            raise NotEstimableError("estimate-positivity", f"{message} (no positivity).", remedy)
+        if isinstance(rows, Problem):
+            columns, weight, share = model(rows)
+            seen = weight > 0
+            if separating_direction(columns[seen], share[seen], _LOGISTIC) is not None:
+                raise _no_positivity(rows)
+        elif not regression.converged:
+            raise _no_positivity(rows)
         if not regression.converged:
-            message = f"The model of “{problem.setting.exposure}” did not converge."
+            message = f"The model of “{rows.setting.exposure}” did not converge."
             raise NotEstimableError("estimate-no-convergence", message, "Look for rare levels and extreme values.")
     return regression
 
 
-def _mirrored(regression: Regression) -> Regression:
-    """The regression of not having the level."""
-    return Regression(
-        regression.family,
-        -regression.coefficients,
-        regression.bread,
-        1 - regression.fitted,
-        regression.gain,
-        regression.converged,
-        regression.steps,
-    )
+def _no_positivity(rows: Rows) -> NotEstimableError:
+    message = f"In some groups of covariates everybody, or nobody, has one level of “{rows.setting.exposure}”"
+    remedy = "Restrict the population to people who could have had either, or coarsen the covariates."
+    return NotEstimableError("estimate-positivity", f"{message} (no positivity).", remedy)
 
 
-def _raw(problem: Problem, here: NDArray[np.bool_], regression: Regression, *, stabilised: bool) -> LevelWeights:
-    people = problem.moments.weight
-    factor = float(people[here].sum() / people.sum()) if stabilised else 1.0
-    with np.errstate(divide="ignore", over="ignore"):
-        weight = np.where(here, factor / regression.fitted, 0.0)
-    return LevelWeights(here, regression.fitted, weight, -weight * (1 - regression.fitted), regression)
+def _quantiles(rows: Rows, found: Propensity, shares: tuple[float, float]) -> tuple[float, float]:
+    """Quantiles of the weights over people: the smallest weight with at least that share of people at or below it."""
 
+    def listed(block: Problem) -> _Listed:
+        first, second = found.weights(block)
+        weight = first.weight + second.weight
+        here = (weight > 0) & (block.moments.weight > 0)
+        return _Listed([weight[here]], [block.moments.weight[here]])
 
-def _truncated(part: LevelWeights, low: float, high: float) -> LevelWeights:
-    beyond = part.here & ((part.weight < low) | (part.weight > high))
-    weight = np.where(part.here, np.clip(part.weight, low, high), 0.0)
-    return LevelWeights(part.here, part.probability, weight, np.where(beyond, 0.0, part.slope), part.regression)
-
-
-def _quantiles(values: Floats, people: Floats, shares: tuple[float, float]) -> tuple[float, float]:
-    """Quantiles of the values over people: the smallest value with at least that share of people at or below it."""
+    every = rows.total(listed)
+    values, people = np.concatenate(every.values), np.concatenate(every.people)
     order = np.argsort(values, kind="stable")
     reached = np.cumsum(people[order]) / people.sum()
     low, high = (values[order][min(int(np.searchsorted(reached, share - 1e-12)), len(values) - 1)] for share in shares)
     return float(low), float(high)
+
+
+@dataclass(frozen=True, eq=False)
+class _Listed:
+    """Weights of people, block after block."""
+
+    values: list[Floats]
+    people: list[Floats]
+
+    def __add__(self, other: _Listed) -> _Listed:
+        return _Listed([*self.values, *other.values], [*self.people, *other.people])

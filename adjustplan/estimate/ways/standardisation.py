@@ -8,41 +8,60 @@ covariates shift who is averaged over, and their outcome shifts the regression.
 
 from __future__ import annotations
 
+from functools import partial
+
+import numpy as np
+
 from adjustplan.data import Floats
 from adjustplan.estimate.kernel import Influence, Regression
-from adjustplan.estimate.kernel.influence import of_residual
-from adjustplan.estimate.problem import Problem, Solution
+from adjustplan.estimate.problem import Problem, Rows, Solution
 from adjustplan.estimate.ways.marginal import compare, influence_on
-from adjustplan.estimate.ways.regression import outcome_regression
+from adjustplan.estimate.ways.regression import of_score, outcome_regression
 
 
-def solve(problem: Problem, start: Regression | None = None) -> Solution:
+def solve(rows: Rows, start: Regression | None = None) -> Solution:
     """Fit the outcome regression, predict, and average."""
-    regression = outcome_regression(problem, start)
-    weight = problem.weight
-    ends = (problem.matrix.exposed, problem.matrix.reference)
-    predicted = [regression.family.mean(end @ regression.coefficients) for end in ends]
-    means = (float(weight @ predicted[0] / weight.sum()), float(weight @ predicted[1] / weight.sum()))
-    return Solution(compare(means, problem.setting), means, regression=regression)
+    regression = outcome_regression(rows, start)
+
+    def predicted(block: Problem) -> Floats:
+        weight = block.weight
+        ends = (block.matrix.exposed, block.matrix.reference)
+        return np.array([weight.sum(), *(weight @ regression.means(end) for end in ends)])
+
+    weight, exposed, reference = rows.total(predicted)
+    means = (float(exposed / weight), float(reference / weight))
+    return Solution(compare(means, rows.setting), means, regression=regression)
 
 
-def with_influence(problem: Problem, found: Solution) -> Solution:
-    """The same with each person's influence on the two means and the effect."""
-    assert found.means is not None
-    assert found.regression is not None
-    matrix = problem.matrix
-    exposed = _on_mean(problem, found.regression, matrix.exposed, found.means[0])
-    reference = _on_mean(problem, found.regression, matrix.reference, found.means[1])
-    both = (exposed, reference)
-    influence = influence_on(found.means, both, problem.setting.scale)
-    return Solution(found.value, found.means, influence, both, found.regression)
+def with_influence(rows: Rows, found: Solution) -> Solution:
+    """The same with each person's influence on the effect."""
+    regression, means = found.regression, found.means
+    assert regression is not None
+    assert means is not None
+
+    def gradients(block: Problem) -> Floats:
+        ends = (block.matrix.exposed, block.matrix.reference)
+        slopes = [(block.weight * regression.family.slope(end @ regression.coefficients)) @ end for end in ends]
+        return np.vstack([*slopes, np.full(len(slopes[0]), block.weight.sum())])
+
+    exposed, reference, weight = rows.total(gradients)
+    whole = float(weight[0])
+    directions = (regression.bread @ exposed / whole, regression.bread @ reference / whole)
+
+    def rule(block: Problem) -> Influence:
+        on = partial(_on_mean, block, regression, whole)
+        both = (
+            on(block.matrix.exposed, means[0], directions[0]),
+            on(block.matrix.reference, means[1], directions[1]),
+        )
+        return influence_on(means, both, block.setting.scale)
+
+    return found.ruled(rule, rows)
 
 
-def _on_mean(problem: Problem, regression: Regression, end: Floats, mean: float) -> Influence:
-    weight = problem.weight
-    predictor = end @ regression.coefficients
-    apart = (regression.family.mean(predictor) - mean) / weight.sum()
-    gradient = (weight * regression.family.slope(predictor)) @ end / weight.sum()
-    nothing = 0.0 * apart
-    factor = (problem.matrix.columns @ (regression.bread @ gradient)) * regression.gain
-    return Influence(nothing, nothing, apart) + of_residual(factor, regression.fitted)
+def _on_mean(
+    block: Problem, regression: Regression, whole: float, end: Floats, mean: float, direction: Floats
+) -> Influence:
+    apart = (regression.means(end) - mean) / whole
+    nothing = np.zeros(len(apart))
+    return Influence(nothing, nothing, apart) + of_score(block, regression, direction)

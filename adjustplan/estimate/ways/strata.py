@@ -9,12 +9,12 @@ from numpy.typing import NDArray
 
 from adjustplan.data import Floats
 from adjustplan.estimate.not_estimable import NotEstimableError
-from adjustplan.estimate.problem import Problem, Solution
+from adjustplan.estimate.problem import Problem, Rows, Solution
 from adjustplan.estimate.ways.propensity import covariate_columns
 from adjustplan.estimate.ways.stratification import Strata, mantel_haenszel, stratification_findings
 
 
-def solve(problem: Problem) -> Solution:
+def solve(rows: Rows) -> Solution:
     """The Mantel–Haenszel estimate.
 
     Raises
@@ -22,10 +22,14 @@ def solve(problem: Problem) -> Solution:
     NotEstimableError
         If the problem has no strata, or none that inform.
     """
-    setting = problem.setting
+    setting = rows.setting
     if setting.kind == "mean":
         message = f"Stratification is built for risks, odds and rates, not for the {setting.measure}."
         raise NotEstimableError("estimate-way-measure", message, "Adjust it another way.")
+    if not isinstance(rows, Problem):
+        message = "Stratification needs categories that make few strata, but almost every row is a stratum of its own."
+        raise NotEstimableError("estimate-no-levels", message, "State cuts for what enters as a number.")
+    problem = rows
     if not (problem.is_exposed.any() and problem.is_reference.any()):
         message = f"“{setting.exposure}” has no levels, which stratification needs."
         remedy = f'State {setting.exposure} = "category" or "cut(…)" in [analysis.forms], or adjust another way.'
@@ -48,7 +52,7 @@ def solve(problem: Problem) -> Solution:
     return Solution(value, standard_error=found.standard_error, findings=stratification_findings(found))
 
 
-def with_influence(problem: Problem, found: Solution) -> Solution:  # noqa: ARG001 — the signature of every way
+def with_influence(rows: Rows, found: Solution) -> Solution:  # noqa: ARG001 — the signature of every way
     """The same: its standard error has a formula of its own."""
     return replace(found, influence=None)
 

@@ -10,39 +10,75 @@ from __future__ import annotations
 
 import numpy as np
 
-from adjustplan.estimate.kernel import Influence
-from adjustplan.estimate.problem import Problem, Solution
+from adjustplan.data import Floats
+from adjustplan.estimate.kernel import Influence, Regression
+from adjustplan.estimate.problem import Problem, Rows, Solution
 from adjustplan.estimate.ways.marginal import compare, influence_on
-from adjustplan.estimate.ways.propensity import LevelWeights, covariate_columns, level_weights, weight_influence
+from adjustplan.estimate.ways.propensity import (
+    LevelWeights,
+    Propensity,
+    covariate_columns,
+    propensity,
+    weight_influence,
+)
 
 
-def solve(problem: Problem, parts: tuple[LevelWeights, LevelWeights] | None = None) -> Solution:
+def solve(rows: Rows, start: tuple[Regression, Regression] | None = None) -> Solution:
     """Weight both groups and compare their means."""
-    parts = parts or level_weights(problem)
-    means = (_mean(problem, parts[0]), _mean(problem, parts[1]))
-    balance = parts[0].weight + parts[1].weight
-    return Solution(compare(means, problem.setting), means, balance=balance, scores=parts[0].probability)
+    found = propensity(rows, start)
+    totals = rows.total(lambda block: np.array([_sums(block, part) for part in found.weights(block)]))
+    means = (float(totals[0, 0] / totals[0, 1]), float(totals[1, 0] / totals[1, 1]))
+    return _shown(Solution(compare(means, rows.setting), means, propensity=found), rows)
 
 
-def with_influence(problem: Problem, found: Solution) -> Solution:
-    """The same with each person's influence on the two means and the effect."""
-    assert found.means is not None
-    parts = level_weights(problem)
-    both = (_on_mean(problem, parts[0], found.means[0]), _on_mean(problem, parts[1], found.means[1]))
-    influence = influence_on(found.means, both, problem.setting.scale)
-    return Solution(found.value, found.means, influence, both, balance=found.balance, scores=found.scores)
+def with_influence(rows: Rows, found: Solution) -> Solution:
+    """The same with each person's influence on the effect."""
+    means, models = found.means, found.propensity
+    assert means is not None
+    assert models is not None
+    whole = rows.total(lambda block: np.array([_sums(block, part)[1] for part in models.weights(block)]))
+    gradients = rows.total(
+        lambda block: np.array(
+            [_moved(block, part, mean) for part, mean in zip(models.weights(block), means, strict=True)]
+        )
+    )
+
+    def rule(block: Problem) -> Influence:
+        parts = models.weights(block)
+        both = [
+            _on_mean(block, models, place, parts[place], means[place], float(whole[place]), gradients[place])
+            for place in (0, 1)
+        ]
+        return influence_on(means, (both[0], both[1]), block.setting.scale)
+
+    return found.ruled(rule, rows)
 
 
-def _mean(problem: Problem, part: LevelWeights) -> float:
-    weight = problem.weight * part.weight
-    return float(weight @ np.nan_to_num(problem.mean) / weight.sum())
+def _shown(found: Solution, rows: Rows) -> Solution:
+    """The same with the weights themselves, where the rows are at hand."""
+    if not isinstance(rows, Problem) or found.propensity is None:
+        return found
+    first, second = found.propensity.weights(rows)
+    return found.showing(first.weight + second.weight, first.probability)
 
 
-def _on_mean(problem: Problem, part: LevelWeights, mean: float) -> Influence:
-    total = float((problem.weight * part.weight).sum())
-    factor = part.weight / total
+def _sums(block: Problem, part: LevelWeights) -> Floats:
+    """Weighted outcomes, and weights."""
+    weight = block.weight * part.weight
+    return np.array([weight @ np.nan_to_num(block.mean), weight.sum()])
+
+
+def _moved(block: Problem, part: LevelWeights, mean: float) -> Floats:
+    """How the weighted sum of what lies above the mean moves with the coefficients of the model of the exposure."""
+    return np.asarray((block.weight * part.slope * (np.nan_to_num(block.mean) - mean)) @ covariate_columns(block))
+
+
+def _on_mean(
+    block: Problem, models: Propensity, place: int, part: LevelWeights, mean: float, whole: float, gradient: Floats
+) -> Influence:
+    factor = part.weight / whole
     own = Influence(np.zeros(len(factor)), factor, -factor * mean)
-    if problem.setting.weighting.known:
+    if block.setting.weighting.known:
         return own
-    moved = problem.weight * part.slope * (np.nan_to_num(problem.mean) - mean) / total
-    return own + weight_influence(problem, part, moved @ covariate_columns(problem))
+    # both regressions of a binary exposure have one model of the exposed level, whose sign is turned
+    return own + weight_influence(block, models.regressions[place], part, gradient / whole)
