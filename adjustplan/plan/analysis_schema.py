@@ -10,6 +10,7 @@ from adjustplan.plan.table import Name, Table
 from adjustplan.study import Measure, OutcomeType
 
 _NUMBER = r"-?\d+(\.\d+)?"
+FORMS = "“category”, “linear”, “spline(4)”, “cut(30, 45, 60)” or, for a Cox model, “stratum”"
 Form = Annotated[
     str,
     StringConstraints(pattern=rf"^(category|linear|stratum|spline\([2-9]\)|cut\({_NUMBER}(, ?{_NUMBER})*\))$"),

@@ -15,7 +15,7 @@ from pydantic_core import ErrorDetails
 from adjustplan.errors import Finding, PlanError, did_you_mean
 from adjustplan.files import read_text
 from adjustplan.graph import CausalGraph, read_graph
-from adjustplan.plan.analysis_schema import Analysis
+from adjustplan.plan.analysis_schema import FORMS, Analysis
 from adjustplan.plan.fitting_together import faults
 from adjustplan.plan.places import Key, line_numbers, line_of
 from adjustplan.plan.schema import Adjustment, PlanFile, Question, Study
@@ -165,6 +165,9 @@ def _finding(details: ErrorDetails, file: str, lines: dict[Key, int]) -> Finding
     if details["type"] == "missing":
         return Finding("plan-missing-key", f"The key “{shown}” is missing.", "Add it.", file=file, line=line)
     given = details["input"]
+    if details["type"] == "string_pattern_mismatch":
+        remedy = f"Write {FORMS}."
+        return Finding("plan-bad-value", f"“{shown}” cannot be {given!r}.", remedy, file=file, line=line)
     known = [str(choice) for choice in details.get("ctx", {}).get("expected", "").replace("'", "").split(" or ")]
     choices = [choice.strip() for group in known for choice in group.split(",") if choice.strip()]
     remedy = did_you_mean(str(given), choices, f"{details['msg']}.") if choices else f"{details['msg']}."
