@@ -10,9 +10,11 @@ from collections.abc import Mapping
 from types import MappingProxyType
 
 from adjustplan.check.estimate_codes import ESTIMATE_CODES
+from adjustplan.check.source_codes import SOURCE_CODES
 
 READER_CODES: Mapping[str, str] = MappingProxyType(
     {
+        **SOURCE_CODES,
         **ESTIMATE_CODES,
         # the files a graph is read from
         "graph-unreadable": "The graph file is not there or may not be read. Its path is relative to the plan that"
@@ -137,6 +139,33 @@ READER_CODES: Mapping[str, str] = MappingProxyType(
         " unknown. Rename one.",
         "data-unsupported-type": "A column holds dates, lists or the like, which no regression can use as they are."
         " Derive a number from it first.",
+        # who is eligible, and what is derived
+        "data-expression-syntax": "An expression of [data] cannot be read at the character that is marked, so nobody"
+        " can say who is meant. Its words are and, or, not, in, is missing and date(…); equality is =.",
+        "data-expression-type": "An expression of [data] compares unlike things, or a condition is none. Engines"
+        " would guess, each differently. Compare like with like.",
+        "data-expression-size": "An expression of [data] is too long, too deep, or built on too many columns. Derive"
+        " columns in between, name steps, or prepare it in the data.",
+        "data-derive-form": "A derived column is not stated by exactly one of cut, recode, days, years and equals,"
+        " or that does not fit its column.",
+        "data-derive-name": "A derived column is called like another, capitals aside, and would replace it in"
+        " silence. Rename it.",
+        "data-derive-cycle": "Derived columns use each other in a circle, so none can come first. Derive one of them"
+        " from the data.",
+        "data-missing-code": "A code for “missing” is one that its column cannot hold, or belongs to a derived"
+        " column, so it would do nothing. Write it as the data have it.",
+        "data-missing-code-unused": "A code for “missing” never occurs in its column. Perhaps it is a slip of the"
+        " pen, and the true code is still among the values; see the code book.",
+        "data-recode-unlisted": "Some old values have no new one and became missing, so their rows leave the"
+        " analysis. List them, or state “otherwise”.",
+        "data-dates-order": "The last day lies before the first in some rows. A time cannot be negative, so it"
+        " became missing there. Correct the dates, or swap from and to.",
+        "data-not-zero-one": "A number that stands as a condition is neither 0 nor 1 in some rows, so what it means"
+        " there is unknown. Compare it with something, or list its codes for “missing”.",
+        "data-none-eligible": "The conditions of [data] leave nobody. Usually a value is coded differently from what"
+        " is written; look at the step that is named.",
+        "data-eligibility-unknown": "Rows were left out because a value is missing that would tell whether they are"
+        " eligible. They may differ from the others: report how many, or allow “is missing” in the condition.",
         # the values in the data
         "data-out-of-range": "A weight or a time is 0 or below, follow-up ends before it begins, or a count or mean"
         " that a ratio compares is below 0. Correct the values, or leave the cells empty.",

@@ -189,7 +189,7 @@ def _number(text: str) -> float:
 
 
 def _at_data(source: Source, code: str, message: str, remedy: str, severity: Severity = "error") -> Finding:
-    return Finding(code, message, remedy, severity, file=str(source.path))
+    return Finding(code, message, remedy, severity, file=source.place)
 
 
 def _at_plan(plan: Plan, code: str, message: str, remedy: str, key: Key) -> Finding:

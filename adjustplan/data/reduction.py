@@ -66,8 +66,8 @@ def reduce_to_patterns(source: Source, wanted: Wanted) -> Patterns:
     totals = {
         "rows": table.count(),
         "observed": finite.count(),
-        "infinite": table.infinite.sum().fill_null(0),
-        "not_binary": finite.notin([0.0, 1.0]).cast("int64").sum().fill_null(0),
+        "infinite": table.count(where=table.infinite),
+        "not_binary": table.count(where=finite.notin([0.0, 1.0])),
         "lowest": finite.min(),
         "highest": finite.max(),
     }
@@ -117,9 +117,7 @@ def _plain(source: Source, wanted: Wanted) -> ibis.Table:
     )
     infinite = plain.outcome.isinf()
     lacking = infinite | plain.elapsed.isnull() | plain.weight.isnull()
-    return plain.mutate(
-        finite=ibis.ifelse(lacking, ibis.null(), plain.outcome), infinite=infinite.cast("int64").fill_null(0)
-    )
+    return plain.mutate(finite=ibis.ifelse(lacking, ibis.null(), plain.outcome), infinite=infinite.fill_null(False))
 
 
 def _weighted_sums(table: ibis.Table, middle_outcome: float, middle_time: float) -> dict[str, ibis.Value]:

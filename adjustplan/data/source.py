@@ -1,66 +1,87 @@
-"""Opening the data: one CSV or Parquet file, seen through an embedded database engine.
+"""Opening the data: whatever holds them, one table seen through a database engine.
 
-The rows stay in the engine (DuckDB, spoken to through ibis): Python gets to know the names and kinds of the
-columns, and later the counts that it asks for, but never a row. That keeps memory flat however long the file
-is, and keeps people's records out of error messages.
+The rows stay in the engine (spoken to through ibis; DuckDB, embedded, unless the data live in a server of their own):
+Python gets to know the names and kinds of the columns, and later the counts that it asks for, but never a row. That
+keeps memory flat however long the data are, and keeps people's records out of error messages.
 
-A CSV file has a header; its separator is the one of ``,`` ``;`` tab and ``|`` that splits the header into
-most names. The kind of a column is decided from the whole column, not from its first lines, so that one "NA"
-far down makes it text here and is reported, instead of breaking off the reading. An empty field is a missing
-value.
+What a place is, is read off its name: a URL has ``://``; anything else is a file, a folder of Parquet files or a
+pattern such as ``parts/*.parquet``, and a file or folder of just that name is always meant before a pattern is. Each
+kind has a file of its own in ``sources``.
 """
 
 from __future__ import annotations
 
-import csv
 import glob
-import tempfile
-from collections import Counter
 from collections.abc import Iterator, Mapping
-from contextlib import contextmanager
-from dataclasses import dataclass
+from contextlib import AbstractContextManager, contextmanager
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from adjustplan.data.patterns import Kind
-from adjustplan.errors import DataError, Finding
+from adjustplan.data.sources.opened import Opened, data_error
+from adjustplan.data.sources.urls import is_url, scrubbed
+from adjustplan.data.spark.place import is_spark
+from adjustplan.errors import Finding
 
 if TYPE_CHECKING:
     import ibis
 
-_SEPARATORS = (",", ";", "\t", "|")
+READABLE = "CSV, TSV, Parquet, Arrow, Stata, SAS, SPSS, Excel or DuckDB"
+_DELIMITED = (".csv", ".tsv", ".csv.gz", ".tsv.gz")
+_ARROW = (".arrow", ".feather")
+_LABELLED = (".dta", ".sas7bdat", ".xpt", ".sav")
+_DATABASE = (".duckdb", ".db")
 
 
 @dataclass(frozen=True, eq=False)
 class Source:
-    """An open file of data.
+    """Open data.
 
     Attributes
     ----------
-    path : Path
-        The file.
+    path : Path or None
+        The file, folder or pattern; None where the data are in a server.
     table : ibis.Table
-        Its rows, inside the engine; valid while the file is open.
+        The rows, inside the engine; valid while the source is open.
     kinds : mapping of str to {"number", "boolean", "text", "other"}
         Each column's kind; "other" (dates, lists, …) cannot enter a model.
     repeated : frozenset of str
-        Column names that the header of a CSV file has more than once, or that differ only in capitals.
+        Column names that the data have more than once, or that differ only in capitals.
+    name : str
+        What messages call the data: the file's name, or the URL without secrets, and the table.
+    place : str
+        What a finding names as its file: the path, or the URL without secrets.
+    notes : tuple of Finding
+        What was done to the data when they were opened: value labels that became levels, codes that became missing.
+    column_notes : mapping of str to tuple of Finding
+        Those of the notes that concern one column.
     """
 
-    path: Path
+    path: Path | None
     table: ibis.Table
     kinds: Mapping[str, Kind]
     repeated: frozenset[str] = frozenset()
+    name: str = ""
+    place: str = ""
+    notes: tuple[Finding, ...] = ()
+    column_notes: Mapping[str, tuple[Finding, ...]] = field(default_factory=dict)
 
 
 @contextmanager
-def open_data(path: Path) -> Iterator[Source]:
-    """Open a CSV or Parquet file.
+def open_data(place: Path | str, *, table: str | None = None, folder: Path | None = None) -> Iterator[Source]:
+    """Open a file, a folder or pattern of Parquet files, a database file or a server.
 
     Parameters
     ----------
-    path : Path
-        A file whose name ends in ``.csv`` or ``.parquet``, in capitals or not.
+    place : Path or str
+        A path whose name ends in ``.csv``, ``.tsv`` (also ``.gz``), ``.parquet``, ``.arrow``, ``.feather``, ``.dta``,
+        ``.sas7bdat``, ``.xpt``, ``.sav``, ``.xlsx``, ``.duckdb`` or ``.db``, in capitals or not; a folder or a pattern
+        of Parquet files; or the URL of a PostgreSQL database, without a password.
+    table : str, optional
+        The table of a database (``schema.table`` where its schema is not the usual one) or the sheet of a workbook.
+    folder : Path, optional
+        What a relative path written as text is relative to; by default the working folder. A ``Path`` is taken as it is.
 
     Yields
     ------
@@ -69,67 +90,84 @@ def open_data(path: Path) -> Iterator[Source]:
     Raises
     ------
     DataError
-        If there is no such file, it is neither CSV nor Parquet, it is empty, or it cannot be read as what it
-        claims to be; also when a line deep inside turns out to be broken while the caller counts.
+        If there is nothing there, it is of no known kind, it is empty, or it cannot be read as what it claims to be;
+        also when a line deep inside turns out to be broken, or the connection is lost, while the caller counts.
     """
-    ending = path.suffix.lower()
-    if ending not in (".csv", ".parquet"):
-        message = f"“{path.name}” is neither a .csv nor a .parquet file."
-        raise _error("data-unknown-format", message, "Save the data as CSV or Parquet.", path)
-    if not path.is_file():
-        remedy = "Mend data = … in [analysis]; it is relative to the plan."
-        raise _error("data-no-file", "There is no such data file.", remedy, path)
-    if path.stat().st_size == 0:
-        raise _error("data-empty", "The data file is empty.", "Export the data again.", path)
-    separator, repeated = _read_header(path) if ending == ".csv" else ("", frozenset())
+    text = str(place)
+    if is_url(text):
+        from adjustplan.data.sources.postgresql import open_postgresql
 
-    import duckdb
-    import ibis
+        with open_postgresql(text, table) as opened:
+            shown = scrubbed(text)
+            yield _source(None, shown, f"{shown}, table {table}", opened)
+        return
+    if is_spark(text):
+        from adjustplan.data.spark.opening import open_spark
 
-    engine = ibis.duckdb.connect(autoinstall_known_extensions=False)
-    engine.settings["enable_progress_bar"] = False
-    engine.settings["temp_directory"] = tempfile.gettempdir()  # by default it would be the user's own folder
-    literal_name = glob.escape(str(path))  # the engine would expand * and [ in a file name
-    try:
-        if ending == ".csv":
-            table = engine.read_csv(
-                literal_name,
-                header=True,
-                delim=separator,
-                quote='"',
-                escape='"',
-                comment="",
-                skip=0,
-                sample_size=-1,
-                strict_mode=True,
-                hive_partitioning=False,
-            )
-        else:
-            table = engine.read_parquet(literal_name, hive_partitioning=False)
-        yield Source(path, table, {name: _kind(dtype) for name, dtype in table.schema().items()}, repeated)
-    except duckdb.Error as error:
-        raise DataError(_broken(path, separator)) from error
-    finally:
-        engine.disconnect()
+        with open_spark(text, folder) as opened:
+            yield _source(None, text, text, opened)
+        return
+    path = Path(place) if folder is None or isinstance(place, Path) else folder / place
+    with _open_path(path, table) as opened:
+        yield _source(path, str(path), path.name if table is None else f"{path.name}, {table}", opened)
 
 
-def _read_header(path: Path) -> tuple[str, frozenset[str]]:
-    """The separator of a CSV file, and the names that stand in its header more than once."""
-    headers: dict[str, list[str]] = {}
-    try:
-        for separator in _SEPARATORS:
-            with path.open(encoding="utf-8-sig", newline="") as lines:
-                headers[separator] = next(csv.reader(lines, delimiter=separator), [])
-    except UnicodeDecodeError as error:
-        raise DataError(_not_utf8(path)) from error
-    except csv.Error as error:
-        raise _error("data-unreadable", f"The header is no CSV: {error}.", "Export it again.", path) from error
-    except OSError as error:
-        raise _error("data-unreadable", f"{error.strerror}.", "Make the file readable.", path) from error
-    best = max(_SEPARATORS, key=lambda separator: len(headers[separator]))
-    names = [name.strip() for name in headers[best]]
-    counts = Counter(name.casefold() for name in names)
-    return best, frozenset(name for name in names if counts[name.casefold()] > 1)
+def _open_path(path: Path, table: str | None) -> AbstractContextManager[Opened]:
+    from adjustplan.data.sources.columnar import open_arrow, open_parquet
+
+    ending = "".join(path.suffixes[-2:]).lower()
+    ending = ending if ending in _DELIMITED else path.suffix.lower()
+    if not path.exists() and glob.has_magic(str(path)):
+        opener, one = open_parquet(path, _matches(path)), True
+    elif path.is_dir() or ending == ".parquet":
+        opener, one = open_parquet(path), True
+    elif ending in _DELIMITED:
+        from adjustplan.data.sources.delimited import open_delimited
+
+        opener, one = open_delimited(path), True
+    elif ending in _ARROW:
+        opener, one = open_arrow(path), True
+    elif ending in _LABELLED:
+        from adjustplan.data.sources.labelled import open_labelled
+
+        opener, one = open_labelled(path), True
+    elif ending == ".xlsx":
+        from adjustplan.data.sources.excel import open_excel
+
+        opener, one = open_excel(path, table), False
+    elif ending in _DATABASE:
+        from adjustplan.data.sources.database_file import open_database_file
+
+        opener, one = open_database_file(path, table), False
+    else:
+        message = f"“{path.name}” ends in nothing that can be read."
+        raise data_error("data-unknown-format", message, f"Save the data as {READABLE}.", path)
+    if one and table is not None:
+        message = f"The plan names the table “{table}”, but these data have no tables in them."
+        raise data_error("data-table-unused", message, "Leave the table out.", path)
+    return opener
+
+
+def _matches(path: Path) -> list[Path]:
+    """The Parquet files that a pattern names, sorted."""
+    found = sorted(Path(name) for name in glob.glob(str(path), recursive=True))  # noqa: PTH207 (its folder may be a pattern too)
+    if not found:
+        message = "No file matches this pattern."
+        raise data_error("data-no-file", message, "Mend data = … in [analysis]; it is relative to the plan.", path)
+    if any(match.suffix.lower() != ".parquet" or not match.is_file() for match in found):
+        message = "The pattern also matches what is no .parquet file."
+        raise data_error("data-unknown-format", message, "Let it end in .parquet; only Parquet may be in parts.", path)
+    return found
+
+
+def _source(path: Path | None, place: str, name: str, opened: Opened) -> Source:
+    table = opened.table
+    if identifiers := [column for column, dtype in table.schema().items() if dtype.is_uuid()]:
+        table = table.mutate(**{column: table[column].cast("string") for column in identifiers})
+    kinds: dict[str, Kind] = {column: _kind(dtype) for column, dtype in table.schema().items()}
+    # The engine renames the second of two columns; whoever asks for it shall hear why it cannot be had.
+    kinds |= {column: "other" for column in opened.repeated if column not in kinds}
+    return Source(path, table, kinds, opened.repeated, name, place, opened.notes, opened.column_notes)
 
 
 def _kind(dtype: Any) -> Kind:
@@ -138,33 +176,3 @@ def _kind(dtype: Any) -> Kind:
     if dtype.is_numeric():
         return "number"
     return "text" if dtype.is_string() else "other"
-
-
-def _broken(path: Path, separator: str) -> Finding:
-    """Why the engine could not read a file, found out without showing what is in it."""
-    if not separator:
-        message = "The file cannot be read as Parquet."
-        return Finding("data-unreadable", message, "Export it again.", file=str(path))
-    message, line = "The file cannot be read as CSV.", None
-    with path.open(encoding="utf-8-sig", newline="") as text:
-        reader = csv.reader(text, delimiter=separator, strict=True)
-        try:
-            wanted = len(next(reader, []))
-            for fields in reader:
-                if fields and len(fields) != wanted:
-                    message = f"This line has {len(fields)} fields where the header has {wanted}."
-                    line = reader.line_num
-                    break
-        except UnicodeDecodeError:
-            return _not_utf8(path)
-        except csv.Error:
-            message, line = "A quotation mark is opened or closed out of place.", reader.line_num
-    return Finding("data-unreadable", message, "Mend or export it again.", file=str(path), line=line)
-
-
-def _not_utf8(path: Path) -> Finding:
-    return Finding("data-not-utf8", "The file is not UTF-8 text.", "Save it as UTF-8.", file=str(path))
-
-
-def _error(code: str, message: str, remedy: str, path: Path) -> DataError:
-    return DataError(Finding(code, message, remedy, file=str(path)))

@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     from adjustplan.estimate.comparing.stratum_effects import EffectModification
     from adjustplan.estimate.diagnostics.diagnosing import Diagnostics
     from adjustplan.estimate.missing.handling import Incomplete
+    from adjustplan.estimate.people import People
 
 _NUMBERS = ("estimate", "lower", "upper", "standard_error")
 
@@ -71,6 +72,8 @@ class Fit(Tabular):
         Of the planned set's models.
     incomplete : Incomplete or None
         What missing values cost, and how their handling went.
+    people : People or None
+        The flow of people from the source to the planned analysis.
     """
 
     measure: Measure
@@ -96,6 +99,7 @@ class Fit(Tabular):
     collapsibility: Collapsibility | MarginalHazard | None = None
     diagnostics: Diagnostics | None = None
     incomplete: Incomplete | None = None
+    people: People | None = None
 
     def to_dict(self) -> dict[str, Any]:
         """The fit as JSON-ready values; None stands where nothing could be estimated."""
@@ -205,7 +209,7 @@ def _numbers(result: Estimate | AdjustedEstimate | None) -> dict[str, float | No
     return {name: getattr(result, name, None) for name in _NUMBERS}
 
 
-_SECTIONS = ("agreement", "modification", "collapsibility", "incomplete", "diagnostics")
+_SECTIONS = ("agreement", "modification", "collapsibility", "people", "incomplete", "diagnostics")
 
 
 def _set_dict(result: AdjustedEstimate) -> dict[str, Any]:

@@ -23,6 +23,7 @@ from adjustplan.estimate.fit_result import Fit
 from adjustplan.estimate.loading import Loaded, load
 from adjustplan.estimate.missing.handling import Incomplete
 from adjustplan.estimate.modelling import estimate_effect
+from adjustplan.estimate.people import into_the_analysis
 from adjustplan.estimate.resampled_intervals import with_resampled_intervals
 from adjustplan.estimate.results import AdjustedEstimate, WayEstimate
 from adjustplan.estimate.threads import one_thread
@@ -89,6 +90,7 @@ def fit_of(done: Analysed) -> Fit:
         collapsibility=parted,
         diagnostics=diagnosed,
         incomplete=done.incomplete,
+        people=into_the_analysis(loaded.flow, loaded.patterns, setting.exposure, planned.chosen, used=planned.rows),
     )
 
 
@@ -186,4 +188,4 @@ def _dropped(loaded: Loaded, planned: AdjustedEstimate) -> list[Finding]:
     lacks = ", ".join(f"{name} {loaded.missing[name]}" for name in [*needed, *roles] if loaded.missing.get(name))
     message = f"{total - planned.rows} of {total} rows lack a value the planned model needs ({lacks})."
     remedy = "Say in the document why they may be left out."
-    return [Finding("data-rows-dropped", message, remedy, "note", str(loaded.plan.data_path))]
+    return [Finding("data-rows-dropped", message, remedy, "note", loaded.place)]

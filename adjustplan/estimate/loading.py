@@ -7,10 +7,13 @@ all of it at once.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from adjustplan.data import Patterns, Source, Wanted, check_columns, check_values, open_data, reduce_to_patterns
 from adjustplan.data.checks import check_covariate, check_roles
+from adjustplan.data.eligibility import Prepared, apply
+from adjustplan.data.expressions.faults import in_plan
+from adjustplan.data.flow import Flow
 from adjustplan.errors import DataError, Finding, PlanError
 from adjustplan.estimate.exposure import ExposureCoding, code_exposure, cut_points
 from adjustplan.estimate.problem import Setting, Variance
@@ -44,6 +47,10 @@ class Loaded:
         What concerns the sets with this variable, and the exposure.
     missing : mapping of str to int
         Rows of the file that lack each variable, or a column that the analysis needs besides.
+    flow : Flow
+        From the source to the eligible rows.
+    place : str
+        Where the data are, without secrets.
     """
 
     plan: Plan
@@ -53,6 +60,8 @@ class Loaded:
     findings: tuple[Finding, ...]
     by_variable: Mapping[str, tuple[Finding, ...]]
     missing: dict[str, int]
+    flow: Flow
+    place: str
 
 
 def load(plan: Plan, limit: int) -> Loaded:
@@ -67,7 +76,8 @@ def load(plan: Plan, limit: int) -> Loaded:
     """
     _refuse(plan)
     question, analysis = plan.question, plan.analysis
-    with open_data(plan.data_path) as source:
+    with open_data(plan.data_place, table=plan.data_table, folder=plan.path.parent) as raw:
+        source, prepared = _eligible(plan, raw)
         ends = [question.exposure, question.outcome]
         usable = {
             variable.name
@@ -93,7 +103,17 @@ def load(plan: Plan, limit: int) -> Loaded:
             patterns = patterns.grouped(name, cuts)
     coding = code_exposure(plan, patterns)
     setting = _setting(plan, coding, forms)
-    return Loaded(plan, setting, patterns, sets, (*notes, *coding.findings), by_variable, missing)
+    flow = prepared.flow if prepared else Flow.start(patterns.total)
+    told = (*source.notes, *(prepared.findings if prepared else ()), *notes, *coding.findings)
+    return Loaded(plan, setting, patterns, sets, told, by_variable, missing, flow, source.place)
+
+
+def _eligible(plan: Plan, source: Source) -> tuple[Source, Prepared | None]:
+    """The rows that the plan speaks of; all of them where it does not say."""
+    if plan.file.data is None:
+        return source, None
+    prepared = apply(source.table, source.kinds, plan.file.data, source.repeated, in_plan(plan))
+    return replace(source, table=prepared.table, kinds=prepared.kinds), prepared
 
 
 def _wanted(plan: Plan, columns: Mapping[str, str]) -> Wanted:

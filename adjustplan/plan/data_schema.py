@@ -101,6 +101,9 @@ class Derivation(Table):
 class Data(Table):
     """What becomes of the rows before any model sees them."""
 
+    table: Name | None = Field(
+        None, description="The table of a database, or the sheet of a workbook, that [analysis] data names."
+    )
     where: Annotated[str | dict[str, str], BeforeValidator(_where)] | None = Field(
         None, description="Whose rows are eligible: one expression, or named ones in the order of their names."
     )

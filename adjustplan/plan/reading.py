@@ -7,7 +7,7 @@ import tomllib
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
-from typing import Any, TypeVar, get_args
+from typing import Any, TypeVar, get_args, get_origin
 
 from pydantic import BaseModel, ValidationError
 from pydantic_core import ErrorDetails
@@ -78,11 +78,23 @@ class Plan:
         return self.path.parent / self.file.graph
 
     @cached_property
-    def data_path(self) -> Path:
-        """Where the data are; PlanError where the plan names none."""
+    def data_place(self) -> Path | str:
+        """Where the data are: a path, or as it stands the URL of a server or what Spark is asked for.
+
+        Raises
+        ------
+        PlanError
+            If the plan names none.
+        """
         if self.analysis.data is None:
             raise self.error("plan-no-data", "The plan names no data.", 'Add data = "…" to [analysis].', ("analysis",))
-        return self.path.parent / self.analysis.data
+        elsewhere = "://" in self.analysis.data or self.analysis.data.startswith("spark:")
+        return self.analysis.data if elsewhere else self.path.parent / self.analysis.data
+
+    @property
+    def data_table(self) -> str | None:
+        """The table of a database, or the sheet of a workbook."""
+        return self.file.data.table if self.file.data else None
 
     def column(self, variable: str) -> str:
         """The data's column that holds ``variable``."""
@@ -175,15 +187,24 @@ def _finding(details: ErrorDetails, file: str, lines: dict[Key, int]) -> Finding
 
 
 def _known_keys(table: Key) -> list[str]:
+    """The keys of the table at this place; a key that the user chose, as of a derived column, leads to its table."""
     model: type[BaseModel] = PlanFile
+    chosen = False
     for part in table:
-        if isinstance(part, str):
-            model = _model_of(next(f.annotation for n, f in model.model_fields.items() if part in (n, f.alias)))
+        if isinstance(part, int):
+            continue
+        if chosen:
+            chosen = False
+            continue
+        annotation = next(f.annotation for n, f in model.model_fields.items() if part in (n, f.alias))
+        inner = _model_of(annotation)
+        assert inner is not None  # an unknown key can only stand in a table
+        model, chosen = inner, get_origin(annotation) is dict
     return [info.alias or name for name, info in model.model_fields.items()]
 
 
-def _model_of(annotation: Any) -> type[BaseModel]:
+def _model_of(annotation: Any) -> type[BaseModel] | None:
     """The table inside an annotation such as ``Study | None`` or ``list[ChosenSet]``."""
     if isinstance(annotation, type) and issubclass(annotation, BaseModel):
         return annotation
-    return next(_model_of(part) for part in get_args(annotation) if part is not type(None))
+    return next((found for part in get_args(annotation) if (found := _model_of(part)) is not None), None)

@@ -13,6 +13,7 @@ from typing import Any, Literal
 from pydantic import Field, PositiveInt
 
 from adjustplan.plan.analysis_schema import Analysis
+from adjustplan.plan.data_schema import Data
 from adjustplan.plan.stress_schema import Stress
 from adjustplan.plan.table import Name, Share, Table
 from adjustplan.study import DesignName, Sampling
@@ -96,6 +97,7 @@ class PlanFile(Table):
     question: Question
     study: Study | None = None
     adjustment: Adjustment | None = None
+    data: Data | None = Field(None, description="What becomes of the rows before any model sees them.")
     analysis: Analysis | None = None
     stress: Stress | None = Field(None, description="How fragile the estimate is, under stated assumptions.")
     waiver: list[Waiver] = Field([], description="Rules that are waived, each with a reason.")

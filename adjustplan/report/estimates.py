@@ -66,7 +66,7 @@ def estimate_section(plan: Plan, fit: Fit | None) -> Iterator[str]:
         yield "\n".join(
             f"- **{finding.severity.capitalize()}.** {text(f'{finding.message} {finding.remedy}')}" for finding in said
         )
-    yield f"Data: {code(plan.data_path.name)}."
+    yield f"Data: {code(str(plan.analysis.data))}."
 
 
 def _method(fit: Fit) -> str:

@@ -21,7 +21,7 @@ SUBJECTS = {code.split("-")[0] for code in [*RULES, *READER_CODES]} | {"seal", "
 
 
 def trees() -> Iterator[ast.Module]:
-    tables = {"reader_codes.py", "estimate_codes.py"}
+    tables = {"reader_codes.py", "estimate_codes.py", "source_codes.py"}
     for path in sorted(SOURCE.rglob("*.py")):
         if path.name not in tables:
             yield ast.parse(path.read_text(encoding="utf-8"), str(path))

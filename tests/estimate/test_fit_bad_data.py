@@ -43,7 +43,7 @@ def test_a_missing_file_is_named(write_plan):
 
 
 def test_a_file_of_another_kind_is_refused(write_plan):
-    assert only_finding(write_plan(data="rows.xlsx")).code == "data-unknown-format"
+    assert only_finding(write_plan(data="rows.doc")).code == "data-unknown-format"
 
 
 @pytest.mark.parametrize(

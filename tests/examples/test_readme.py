@@ -26,7 +26,7 @@ def test_the_readme_shows_the_estimates_of_the_example() -> None:
 def test_every_command_the_readme_names_exists() -> None:
     from typer.main import get_command
 
-    from adjustplan.cli import checking, graphs, plans, registration, starting  # noqa: F401 (they register commands)
+    from adjustplan.cli import checking, graphs, plans, registration, starting, stressing  # noqa: F401 (they register commands)
     from adjustplan.cli.app import app
 
     named = set(re.findall(r"^    adjustplan (\w+)", README, flags=re.MULTILINE))

@@ -68,7 +68,7 @@ def test_a_plan_is_read_with_its_graph(plan_path: Path) -> None:
     assert [other.members for other in plan.adjustment.alternative] == [[], ["district"]]
     assert plan.column("income") == "inc_2020"
     assert plan.column("damp") == "damp"
-    assert plan.data_path == plan_path.parent / "damp.csv"
+    assert plan.data_place == plan_path.parent / "damp.csv"
     assert len(plan.graph) == 4
 
 
@@ -119,7 +119,7 @@ def test_a_missing_table_is_said_when_it_is_needed(tmp_path: Path) -> None:
     with pytest.raises(PlanError, match=r"no \[adjustment\] yet"):
         _ = plan.adjustment
     with pytest.raises(PlanError, match=r"no \[analysis\] yet"):
-        _ = plan.data_path
+        _ = plan.data_place
 
 
 def test_a_broken_graph_is_reported_as_the_graphs_own(plan_path: Path) -> None:
