@@ -127,7 +127,8 @@ READER_CODES: Mapping[str, str] = MappingProxyType(
         " leaves no effect to estimate. Take it out.",
         # the data file
         "data-no-file": "The data file that the plan names is not there. Its path is relative to the plan.",
-        "data-unknown-format": "Data are read from CSV or Parquet files, which the file's ending says.",
+        "data-unknown-format": "Data are read from CSV, TSV, Parquet, Arrow, Stata, SAS, SPSS, Excel and DuckDB"
+        " files, from PostgreSQL and through Spark, which the name of the place says.",
         "data-empty": "The data file has nothing in it. Export the data again.",
         "data-no-rows": "The data file has a header and no rows. Export the data again.",
         "data-unreadable": "The data file is not what its ending says, or breaks off, or a line has too many cells."

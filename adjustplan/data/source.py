@@ -81,7 +81,7 @@ def open_data(place: Path | str, *, table: str | None = None, folder: Path | Non
     table : str, optional
         The table of a database (``schema.table`` where its schema is not the usual one) or the sheet of a workbook.
     folder : Path, optional
-        What a relative path written as text is relative to; by default the working folder. A ``Path`` is taken as it is.
+        What a relative path written as text is relative to; by default the working folder. A ``Path`` stays as it is.
 
     Yields
     ------

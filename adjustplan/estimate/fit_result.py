@@ -74,6 +74,8 @@ class Fit(Tabular):
         What missing values cost, and how their handling went.
     people : People or None
         The flow of people from the source to the planned analysis.
+    fingerprint : str or None
+        SHA-256 of the columns used, of all eligible rows; the document has it, as it takes a pass over the rows.
     """
 
     measure: Measure
@@ -100,6 +102,7 @@ class Fit(Tabular):
     diagnostics: Diagnostics | None = None
     incomplete: Incomplete | None = None
     people: People | None = None
+    fingerprint: str | None = None
 
     def to_dict(self) -> dict[str, Any]:
         """The fit as JSON-ready values; None stands where nothing could be estimated."""
@@ -119,6 +122,7 @@ class Fit(Tabular):
             "rows_dropped": self.rows_total - self.rows,
             "missing": self.missing,
             "patterns": self.patterns,
+            "fingerprint": self.fingerprint,
             "crude": asdict(self.crude) if self.crude else None,
             "adjusted": [_set_dict(result) for result in self.adjusted],
             "ways": [way.to_dict() for way in self.ways],

@@ -90,6 +90,7 @@ def fit_of(done: Analysed) -> Fit:
         collapsibility=parted,
         diagnostics=diagnosed,
         incomplete=done.incomplete,
+        fingerprint=loaded.fingerprint,
         people=into_the_analysis(loaded.flow, loaded.patterns, setting.exposure, planned.chosen, used=planned.rows),
     )
 
@@ -103,9 +104,9 @@ class Analysed:
     incomplete: Incomplete | None
 
 
-def analyse(plan: Plan, limit: int, progress: Progress | None = None) -> Analysed:
+def analyse(plan: Plan, limit: int, progress: Progress | None = None, *, fingerprinted: bool = False) -> Analysed:
     """Run the planned models; see :func:`fit` for parameters and errors."""
-    loaded = load(plan, limit)
+    loaded = load(plan, limit, fingerprinted=fingerprinted)
     bootstrap = plan.analysis.bootstrap
     with one_thread():
         results, incomplete = estimate_sets(loaded, progress)

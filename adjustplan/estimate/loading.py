@@ -14,6 +14,7 @@ from adjustplan.data.checks import check_covariate, check_roles
 from adjustplan.data.eligibility import Prepared, apply
 from adjustplan.data.expressions.faults import in_plan
 from adjustplan.data.flow import Flow
+from adjustplan.data.sources.fingerprint import fingerprint
 from adjustplan.errors import DataError, Finding, PlanError
 from adjustplan.estimate.exposure import ExposureCoding, code_exposure, cut_points
 from adjustplan.estimate.problem import Setting, Variance
@@ -51,6 +52,8 @@ class Loaded:
         From the source to the eligible rows.
     place : str
         Where the data are, without secrets.
+    fingerprint : str or None
+        SHA-256 of the columns used, of all eligible rows in whatever order; None where it was not asked for.
     """
 
     plan: Plan
@@ -62,10 +65,11 @@ class Loaded:
     missing: dict[str, int]
     flow: Flow
     place: str
+    fingerprint: str | None
 
 
-def load(plan: Plan, limit: int) -> Loaded:
-    """Read, reduce and check the data of a plan.
+def load(plan: Plan, limit: int, *, fingerprinted: bool = False) -> Loaded:
+    """Read, reduce and check the data of a plan; ``fingerprinted`` takes one more pass over the rows.
 
     Raises
     ------
@@ -94,6 +98,8 @@ def load(plan: Plan, limit: int) -> Loaded:
         patterns = reduce_to_patterns(source, _wanted(plan, columns))
         by_variable = _check(plan, source, patterns, covariates)
         missing = {name: patterns.missing(name) for name in columns} | _missing_roles(plan, source)
+        used = sorted({plan.column(question.outcome), *columns.values(), *_roles(analysis).values()})
+        mark = fingerprint(source, used) if fingerprinted else None
     missing[question.outcome] = patterns.total - patterns.outcome.observed
     forms = {name: _form(analysis, patterns, name) for name in covariates}
     notes_of_forms = {name: _form_note(plan, patterns, name) for name in covariates if name not in analysis.forms}
@@ -105,7 +111,7 @@ def load(plan: Plan, limit: int) -> Loaded:
     setting = _setting(plan, coding, forms)
     flow = prepared.flow if prepared else Flow.start(patterns.total)
     told = (*source.notes, *(prepared.findings if prepared else ()), *notes, *coding.findings)
-    return Loaded(plan, setting, patterns, sets, told, by_variable, missing, flow, source.place)
+    return Loaded(plan, setting, patterns, sets, told, by_variable, missing, flow, source.place, mark)
 
 
 def _eligible(plan: Plan, source: Source) -> tuple[Source, Prepared | None]:
@@ -211,9 +217,7 @@ def _check(plan: Plan, source: Source, patterns: Patterns, covariates: list[str]
 
 def _missing_roles(plan: Plan, source: Source) -> dict[str, int]:
     """Rows that lack a column which the analysis needs besides variables."""
-    analysis = plan.analysis
-    roles = ("person_time", "time", "entry", "weights", "cluster", "matched_set")
-    columns = {role: column for role in roles if (column := getattr(analysis, role)) is not None}
+    columns = _roles(plan.analysis)
     if not columns:
         return {}
     table = source.table
@@ -236,3 +240,9 @@ def _form_note(plan: Plan, patterns: Patterns, name: str) -> tuple[Finding, ...]
     remedy = f'State {name} = "linear", "category", "cut(…)" or "spline(4)" in [analysis.forms].'
     line = plan.line("analysis", "forms")
     return (Finding("estimate-default-form", message, remedy, "note", str(plan.path), line),)
+
+
+def _roles(analysis: Analysis) -> dict[str, str]:
+    """The columns that the analysis needs besides variables."""
+    roles = ("person_time", "time", "entry", "weights", "cluster", "matched_set")
+    return {role: column for role in roles if (column := getattr(analysis, role)) is not None}

@@ -108,7 +108,7 @@ def gather(plan: Plan, *, limit: int = 20) -> Material:
         from adjustplan.estimate.fitting import analyse, fit_of
         from adjustplan.estimate.stress.running import stress_analysed
 
-        done = analyse(plan, limit)
+        done = analyse(plan, limit, fingerprinted=True)
         fitted = fit_of(done)
         fragile = stress_analysed(done) if fitted.adjusted[0].estimate is not None else None
     sets = list_sets(*asked, question.effect, limit=MOST_SETS)

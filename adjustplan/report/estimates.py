@@ -66,7 +66,8 @@ def estimate_section(plan: Plan, fit: Fit | None) -> Iterator[str]:
         yield "\n".join(
             f"- **{finding.severity.capitalize()}.** {text(f'{finding.message} {finding.remedy}')}" for finding in said
         )
-    yield f"Data: {code(str(plan.analysis.data))}."
+    mark = f" The columns used have the fingerprint {code(fit.fingerprint)} (SHA-256)." if fit.fingerprint else ""
+    yield f"Data: {code(str(plan.analysis.data))}.{mark}"
 
 
 def _method(fit: Fit) -> str:

@@ -19,6 +19,7 @@ from data.sources.postgres_server import Server, postgres, running_server
 from data.spark.spark_session import spark
 
 from adjustplan.estimate import Fit, fit
+from adjustplan.estimate.fitting import analyse
 from adjustplan.plan import read_plan
 
 __all__ = ["postgres", "spark"]  # fixtures
@@ -193,3 +194,18 @@ def test_a_plan_that_holds_a_password_is_refused_without_repeating_it(tmp_path):
             assert "data-credentials" in {finding["code"] for finding in json.loads(done.stdout)["findings"]}
         else:
             assert "password" in done.stderr
+
+
+def test_the_same_people_have_the_same_fingerprint_in_whatever_file(tmp_path):
+    marks = set()
+    ROWS.to_csv(tmp_path / "rows.csv", index=False)
+    ROWS.sample(frac=1, random_state=1).to_parquet(tmp_path / "rows.parquet", index=False)
+    ROWS.to_stata(tmp_path / "rows.dta", write_index=False)
+    for name in ("rows.csv", "rows.parquet", "rows.dta"):
+        fitted(tmp_path, name)
+        marks.add(analyse(read_plan(tmp_path / "plan.toml"), 0, fingerprinted=True).loaded.fingerprint)
+    assert len(marks) == 1
+    other = ROWS.assign(diabetes=1 - ROWS["diabetes"])
+    other.to_csv(tmp_path / "rows.csv", index=False)
+    fitted(tmp_path, "rows.csv")
+    assert analyse(read_plan(tmp_path / "plan.toml"), 0, fingerprinted=True).loaded.fingerprint not in marks

@@ -67,7 +67,7 @@ def choose_table(
         if len(tables) == 1 and not needed:
             return tables[0]
         message = "The plan does not say which table holds the data."
-        raise data_error("data-no-table", message, f"Add table = … to [analysis]. {there}", place)
+        raise data_error("data-no-table", message, f"Add table = … to [data]. {there}", place)
     matches = [(schema, name) for schema, name in tables if wanted in (name, f"{schema}.{name}")]
     if (usual, wanted) in matches:
         return usual, wanted

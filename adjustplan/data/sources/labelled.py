@@ -237,7 +237,7 @@ def _notes(path: Path, tally: _Tally) -> dict[str, tuple[Finding, ...]]:
             more = f", and {len(codes) - _SHOWN} other codes" if len(codes) > _SHOWN else ""
             message = f"User-defined codes of “{name}” became missing: {shown}{more}."
             remedy = "Nothing needs mending where the codes mean missing."
-            found.append(Finding("data-user-missing", message, remedy, "note", file=str(path)))
+            found.append(Finding("data-missing-codes", message, remedy, "note", file=str(path)))
         if found:
             notes[name] = tuple(found)
     return notes

@@ -55,7 +55,7 @@ def test_codes_for_missing_become_missing_and_are_counted_in_stata(tmp_path):
     assert values["income"] == [10, None, None, None, None]
     assert kinds["income"] == "number"
     message = "User-defined codes of “income” became missing: .a in 2 rows, .b in 1 row."
-    assert notes == {"income": [("data-user-missing", "note", message)]}
+    assert notes == {"income": [("data-missing-codes", "note", message)]}
 
 
 def test_codes_for_missing_become_missing_and_are_counted_in_sas(tmp_path):
