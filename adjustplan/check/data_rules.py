@@ -24,10 +24,12 @@ def column(subject: Subject) -> Iterator[Finding]:
     if analysis is None or analysis.data is None or not _there(subject):
         return
     from adjustplan.data import check_columns, open_data  # only where there are data
-    from adjustplan.data.eligibility import apply
+    from adjustplan.data.eligibility import apply, data_problems
     from adjustplan.data.expressions.faults import in_plan
 
     plan = subject.plan
+    if plan.file.data is not None and data_problems(plan.file.data):
+        return  # the rule below says so
     needed = [subject.exposure, subject.outcome, *subject.members]
     measured = [name for name in needed if not subject.plan.graph[name].unmeasured]
     try:

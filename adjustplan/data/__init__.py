@@ -1,7 +1,8 @@
-"""Data: from a file of rows to covariate patterns, the only thing the models ever see.
+"""Data: from rows, wherever they are, to covariate patterns, the only thing the models ever see.
 
-``source`` opens a CSV or Parquet file inside an embedded engine, ``reduction`` has the engine count the rows
-of each covariate pattern, ``patterns`` holds the counts, and ``checks`` says what is wrong with the columns.
+``source`` opens whatever holds the rows (``sources`` and ``spark`` have a file for each kind), ``eligibility`` keeps
+those that the plan means and derives columns, ``reduction`` has the engine count the rows of each covariate pattern,
+``patterns`` and ``moments`` hold the counts, and ``checks`` says what is wrong with the columns.
 """
 
 from adjustplan.data.checks import check_columns, check_values

@@ -67,7 +67,11 @@ class Analysis(Table):
 
     measure: Measure = Field(description="The measure of effect that is estimated.")
     outcome_type: OutcomeType | None = Field(None, description="What kind of outcome it is.")
-    data: Name | None = Field(None, description="A CSV or Parquet file, relative to the plan.")
+    data: Name | None = Field(
+        None,
+        description="A file or folder, relative to the plan; a postgresql:// URL without a password; or spark: and a"
+        " Parquet folder or table.",
+    )
     columns: dict[str, Name] = Field({}, description="variable = column, where the two differ.")
     forms: dict[str, Form] = Field(
         {},
