@@ -31,6 +31,7 @@ _LOST = (
     "MetadataFetchFailed",
     "Master removed our application",
     "StatusCode.UNAVAILABLE",
+    "RETRIES_EXCEEDED",
     "INVALID_HANDLE.SESSION",
 )
 _NO_PATH = ("PATH_NOT_FOUND", "Path does not exist", "FILE_NOT_EXIST", "java.io.FileNotFoundException")

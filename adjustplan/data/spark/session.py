@@ -37,6 +37,7 @@ if TYPE_CHECKING:
 
 _CLUSTER = ("PYSPARK_GATEWAY_PORT", "PYSPARK_SUBMIT_ARGS", "SPARK_CONF_DIR")
 _SECONDS_TO_STOP = 20
+_MOST_RETRIES = 6  # about a minute, where Spark would go on for ten
 _OWN_SETTINGS: Mapping[str, str] = {
     # Spark tells columns apart by capitals, so that two that differ in nothing else can be found and reported.
     "spark.sql.caseSensitive": "true",
@@ -122,6 +123,8 @@ def _apart(session: SparkSession) -> SparkSession:
     if not _is_remote(session):
         session = session.newSession()
     for name, value in _OWN_SETTINGS.items():
+        if _is_remote(session) and ".pyspark." in name:
+            continue  # a server always sends Arrow, and has no such settings
         session.conf.set(name, value)
     return session
 
@@ -135,7 +138,11 @@ def _joined(place: str) -> Iterator[Running]:
     from pyspark.sql import SparkSession
 
     try:
-        session = _apart(SparkSession.builder.remote(os.environ["SPARK_REMOTE"]).getOrCreate())
+        from pyspark.sql.connect.client.retries import DefaultPolicy
+
+        joined: Any = SparkSession.builder.remote(os.environ["SPARK_REMOTE"]).getOrCreate()
+        joined.client.set_retry_policies([DefaultPolicy(max_retries=_MOST_RETRIES)])
+        session = _apart(joined)
     except Exception:  # gRPC has exceptions of its own; what they say may hold a token
         message = "The Spark Connect server that SPARK_REMOTE names does not answer."
         remedy = "Check SPARK_REMOTE and the network, and install pyspark[connect] of the server's version."
@@ -176,7 +183,7 @@ def _started(place: str) -> Iterator[Running]:
         yield Running(session, gateway and gateway.proc)
     finally:
         _stop(context, gateway)
-        if threading.current_thread() is threading.main_thread():
+        if interrupt is not None and threading.current_thread() is threading.main_thread():
             signal.signal(signal.SIGINT, interrupt)
         shutil.rmtree(scratch, ignore_errors=True)
 

@@ -11,7 +11,7 @@ import importlib.util
 import os
 import shutil
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import ExitStack, contextmanager
 from pathlib import Path
 from typing import Any
 
@@ -41,12 +41,13 @@ def require_spark() -> None:
 def spark() -> Iterator[Any]:
     """One session for all tests."""
     require_spark()
-    with pytest.MonkeyPatch.context() as patch:
-        patch.setenv("MASTER", "local[4]")
-        patch.setenv("JAVA_TOOL_OPTIONS", QUICK)
-        with spark_session("spark:tests") as running:
-            running.session.conf.set("spark.sql.shuffle.partitions", "4")
-            yield running.session
+    with ExitStack() as stack:
+        with pytest.MonkeyPatch.context() as patch:
+            patch.setenv("MASTER", "local[4]")
+            patch.setenv("JAVA_TOOL_OPTIONS", QUICK)
+            session = stack.enter_context(spark_session("spark:tests")).session
+        session.conf.set("spark.sql.shuffle.partitions", "4")
+        yield session
 
 
 @contextmanager

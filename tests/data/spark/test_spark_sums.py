@@ -57,7 +57,7 @@ def fitted_by_newton(frame):
 
     size = len(COLUMNS) + 1
     coefficients = np.zeros(size)
-    for _ in range(6):
+    for _ in range(9):  # the information is that of the step before the last, which must have settled too
         sums = sum_over_rows(frame, [*COLUMNS, "ill"], step, coefficients)
         information = sums[size:-1].reshape(size, size)
         coefficients = coefficients + np.linalg.solve(information, sums[:size])
