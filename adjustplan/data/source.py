@@ -21,7 +21,7 @@ from typing import TYPE_CHECKING, Any
 from adjustplan.data.patterns import Kind
 from adjustplan.data.sources.opened import Opened, data_error
 from adjustplan.data.sources.urls import is_url, scrubbed
-from adjustplan.data.spark.place import is_spark
+from adjustplan.data.spark.place import is_spark, read_place
 from adjustplan.errors import Finding
 
 if TYPE_CHECKING:
@@ -94,18 +94,22 @@ def open_data(place: Path | str, *, table: str | None = None, folder: Path | Non
         also when a line deep inside turns out to be broken, or the connection is lost, while the caller counts.
     """
     text = str(place)
+    if is_spark(text):
+        from adjustplan.data.spark.opening import open_spark
+
+        shown = read_place(text, folder).shown
+        if table is not None:
+            message = "What stands behind “spark:” names its table itself."
+            raise data_error("data-table-unused", message, "Leave the table out of [data].", shown)
+        with open_spark(text, folder) as opened:
+            yield _source(None, shown, shown, opened)
+        return
     if is_url(text):
         from adjustplan.data.sources.postgresql import open_postgresql
 
         with open_postgresql(text, table) as opened:
             shown = scrubbed(text)
             yield _source(None, shown, f"{shown}, table {table}", opened)
-        return
-    if is_spark(text):
-        from adjustplan.data.spark.opening import open_spark
-
-        with open_spark(text, folder) as opened:
-            yield _source(None, text, text, opened)
         return
     path = Path(place) if folder is None or isinstance(place, Path) else folder / place
     with _open_path(path, table) as opened:

@@ -147,6 +147,7 @@ def test_spark_gives_the_estimates_of_its_rows(tmp_path, spark):  # noqa: ARG001
     for part in range(4):
         ROWS.iloc[part::4].to_parquet(folder / f"part{part}.parquet", index=False)
     holds(fitted(tmp_path, "spark:rows.parquet"))
+    holds(fitted(tmp_path, f"spark:{folder}"))
 
 
 def test_a_server_that_is_killed_in_the_middle_of_a_fit_gets_one_clear_line(tmp_path):
