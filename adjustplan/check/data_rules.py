@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import replace
 from glob import glob, has_magic
 from pathlib import Path
 
@@ -24,8 +23,7 @@ def column(subject: Subject) -> Iterator[Finding]:
     if analysis is None or analysis.data is None or not _there(subject):
         return
     from adjustplan.data import check_columns, open_data  # only where there are data
-    from adjustplan.data.eligibility import apply, data_problems
-    from adjustplan.data.expressions.faults import in_plan
+    from adjustplan.data.eligibility import data_problems, eligible_rows
 
     plan = subject.plan
     if plan.file.data is not None and data_problems(plan.file.data):
@@ -34,10 +32,7 @@ def column(subject: Subject) -> Iterator[Finding]:
     measured = [name for name in needed if not subject.plan.graph[name].unmeasured]
     try:
         with open_data(plan.data_place, table=plan.data_table, folder=plan.path.parent) as source:
-            if plan.file.data is not None:
-                prepared = apply(source.table, source.kinds, plan.file.data, source.repeated, in_plan(plan))
-                source = replace(source, table=prepared.table, kinds=prepared.kinds)
-            yield from check_columns(plan, source, measured)
+            yield from check_columns(plan, eligible_rows(plan, source)[0], measured)
     except DataError as error:
         yield from error.findings
 

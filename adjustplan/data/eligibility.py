@@ -27,10 +27,12 @@ from adjustplan.data.derivation import (
 )
 from adjustplan.data.expressions import Node, Place, Problem, ValueKind, check, parse
 from adjustplan.data.expressions.compiling import Rows, opposite
-from adjustplan.data.expressions.faults import alone, of_expression
+from adjustplan.data.expressions.faults import alone, in_plan, of_expression
 from adjustplan.data.flow import Change, Flow, LeftOut
 from adjustplan.data.patterns import Kind
+from adjustplan.data.source import Source
 from adjustplan.errors import DataError, Finding
+from adjustplan.plan import Plan
 from adjustplan.plan.data_schema import Data
 
 if TYPE_CHECKING:
@@ -137,6 +139,14 @@ def apply(
     if problems:
         raise DataError(dict.fromkeys(map(place, problems)))
     return _prepared(table, kinds, data, trees, all_kinds, conditions, zero_one, place)
+
+
+def eligible_rows(plan: Plan, source: Source) -> tuple[Source, Prepared | None]:
+    """The source with the rows that the plan speaks of, and how they came about; as it is where the plan is silent."""
+    if plan.file.data is None:
+        return source, None
+    prepared = apply(source.table, source.kinds, plan.file.data, source.repeated, in_plan(plan))
+    return replace(source, table=prepared.table, kinds=prepared.kinds), prepared
 
 
 def kinds_of(table: ibis.Table, kinds: Mapping[str, Kind]) -> dict[str, ValueKind]:

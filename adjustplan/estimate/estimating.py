@@ -58,6 +58,11 @@ class SetResult:
     by_way: Mapping[Way, Modelled] = field(default_factory=dict)
 
     @property
+    def usable(self) -> bool:
+        """Whether there are rows, and nothing in the set or its variables stands against adjusting for it."""
+        return self.complete is not None and all(finding.severity != "error" for finding in self.findings)
+
+    @property
     def adjusted(self) -> Modelled | None:
         """By the planned way."""
         return next(iter(self.by_way.values()), None)
@@ -82,27 +87,29 @@ class SetResult:
         )
 
 
-def estimate_sets(loaded: Loaded, progress: Progress | None = None) -> tuple[list[SetResult], Incomplete | None]:
-    """The estimates of every set, and what missing values cost the planned one."""
+def estimate_sets(
+    loaded: Loaded, progress: Progress | None = None
+) -> tuple[list[SetResult], SetResult, Incomplete | None]:
+    """The estimates of every set, the planned one's from complete rows alone, and what missing values cost that one."""
     handling = loaded.plan.analysis.missing
-    results = [_on_complete_rows(loaded, chosen) for chosen in loaded.sets]
-    planned = results[0]
-    complete_case = planned.adjusted.estimate if planned.adjusted else None
-    total, complete = loaded.patterns.total, planned.rows
+    results = [_prepared(loaded, chosen) for chosen in loaded.sets]
+    alone = _on_complete_rows(loaded, results[0])
+    total, complete = loaded.patterns.total, alone.rows
     if handling == "complete cases":
-        if complete == total or planned.complete is None:
-            return results, None
-        return results, Incomplete(handling, total, complete, complete, None, {})
+        results = [alone, *(_on_complete_rows(loaded, result) for result in results[1:])]
+        if complete == total or alone.complete is None:
+            return results, alone, None
+        return results, alone, Incomplete(handling, total, complete, complete, None, {})
+    complete_case = alone.adjusted.estimate if alone.adjusted else None
+    numbers: dict[str, float] = {}
+    said: tuple[Finding, ...] = ()
     if handling == "inverse probability":
-        numbers: dict[str, float] = {}
-        said: tuple[Finding, ...] = ()
         for place, result in enumerate(results):
-            if result.complete is not None:
-                results[place], own, told = _weighted(loaded, result)
-                numbers, said = (own, told) if place == 0 else (numbers, said)
-        return results, Incomplete(handling, total, complete, complete, complete_case, numbers, said)
-    results, numbers, said = _imputed(loaded, results, progress)
-    return results, Incomplete(handling, total, complete, results[0].rows, complete_case, numbers, said)
+            results[place], own, told = _weighted(loaded, result)
+            numbers, said = (own, told) if place == 0 else (numbers, said)
+    else:
+        results, numbers, said = _imputed(loaded, results, progress)
+    return results, alone, Incomplete(handling, total, complete, results[0].rows, complete_case, numbers, said)
 
 
 def tasks(loaded: Loaded, chosen: ReportedSet) -> dict[Way, Setting]:
@@ -112,7 +119,8 @@ def tasks(loaded: Loaded, chosen: ReportedSet) -> dict[Way, Setting]:
     return {way: loaded.setting.by(way, model_for(analysis, way)) for way in dict.fromkeys(ways)}
 
 
-def _on_complete_rows(loaded: Loaded, chosen: ReportedSet) -> SetResult:
+def _prepared(loaded: Loaded, chosen: ReportedSet) -> SetResult:
+    """A set with the rows that are complete for it, before anything is estimated."""
     told = list(chosen.findings)
     if chosen.refused:
         return SetResult(chosen, tuple(told))
@@ -125,9 +133,11 @@ def _on_complete_rows(loaded: Loaded, chosen: ReportedSet) -> SetResult:
         told.append(Finding("data-no-complete-rows", message, "Choose a set that the data can serve."))
         return SetResult(chosen, tuple(told))
     blank = SetResult(chosen, tuple(told), complete.people, complete)
-    if any(finding.severity == "error" for finding in told):
-        return replace(blank, crude=_crude(complete, setting))
-    return _done(loaded, blank, complete)
+    return blank if blank.usable else replace(blank, crude=_crude(complete, setting))
+
+
+def _on_complete_rows(loaded: Loaded, blank: SetResult) -> SetResult:
+    return _done(loaded, blank, blank.complete) if blank.usable and blank.complete is not None else blank
 
 
 def _done(loaded: Loaded, blank: SetResult, patterns: Patterns) -> SetResult:
@@ -155,6 +165,8 @@ def _crude(patterns: Patterns, setting: Setting) -> Modelled:
 def _weighted(loaded: Loaded, result: SetResult) -> tuple[SetResult, dict[str, float], tuple[Finding, ...]]:
     """The same with the complete rows weighted for those like them."""
     setting, members = loaded.setting, result.chosen.members
+    if not result.usable:
+        return result, {}, ()
     try:
         patterns, projection, numbers, said = weigh_complete(loaded.patterns, setting, members)
     except NotEstimableError as error:
@@ -177,7 +189,7 @@ def _imputed(
     setting = loaded.setting
     variables = [
         setting.exposure,
-        *sorted({name for r in results if r.complete is not None for name in r.chosen.members}),
+        *sorted({name for r in results if r.usable for name in r.chosen.members}),
     ]
     try:
         copies, said, traces, data = completed(
@@ -194,19 +206,21 @@ def _imputed(
         nothing = Modelled(None, (error.finding,))
         failed = [
             replace(result, crude=nothing, by_way=dict.fromkeys(tasks(loaded, result.chosen), nothing))
+            if result.usable
+            else result
             for result in results
         ]
         return failed, {}, ()
     pooled: list[SetResult] = []
     numbers: dict[str, float] = {}
     for place, result in enumerate(results):
-        if result.complete is None or not result.by_way:
+        if not result.usable:
             pooled.append(result)
             continue
         own = [copy[place] for copy in every]
         crude, _ = _pool([one.crude for one in own], setting)
         by_way: dict[Way, Modelled] = {}
-        for way in result.by_way:
+        for way in tasks(loaded, result.chosen):
             by_way[way], rule = _pool([one.by_way[way] for one in own], setting)
             if place == 0 and way == setting.way and rule is not None:
                 numbers = {
@@ -220,7 +234,7 @@ def _imputed(
 
 
 def _of_copy(loaded: Loaded, result: SetResult, copy: Patterns) -> SetResult:
-    if result.complete is None or not result.by_way:
+    if not result.usable:
         return result
     needed = [loaded.setting.exposure, *result.chosen.members]
     return _done(loaded, result, copy.complete(needed, pooled=not needs_rows(loaded.setting)))

@@ -19,6 +19,10 @@ from __future__ import annotations
 
 from bisect import bisect_right
 from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
 
 from adjustplan.data import Patterns
 from adjustplan.data.checks import show
@@ -53,6 +57,11 @@ class ExposureCoding:
     words: tuple[str, str]
     shift: bool = False
     findings: tuple[Finding, ...] = ()
+
+    def groups(self, values: NDArray[Any]) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
+        """Who has the exposed and who the reference level; nobody, where the exposure is no category."""
+        levels = self.form == "category"
+        return np.asarray(values == self.exposed) & levels, np.asarray(values == self.reference) & levels
 
 
 def code_exposure(plan: Plan, patterns: Patterns) -> ExposureCoding:

@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any, Literal
 from adjustplan.errors import Finding
 from adjustplan.estimate.results import AdjustedEstimate, Estimate, Section, WayEstimate, aligned, interval_text
 from adjustplan.identify.showing import Tabular
+from adjustplan.plan.analysis_faults import WITHOUT_OUTCOME_MODEL
 from adjustplan.plan.analysis_schema import Missing, Model, Way
 from adjustplan.study import Measure
 
@@ -201,7 +202,7 @@ class Fit(Tabular):
     def method(self) -> str:
         """How the estimates were made, in a few words."""
         source = "bootstrap" if self.intervals == "bootstrap" else f"{self.variance} variance"
-        model = "" if self.way in ("weighting", "stratification") else f" ({self.model})"
+        model = "" if self.way in WITHOUT_OUTCOME_MODEL else f" ({self.model})"
         return f"{self.way}{model}, {self.missing_values}, 95 % confidence intervals, {source}"
 
     def _repr_html_(self) -> str:

@@ -22,13 +22,13 @@ from adjustplan.estimate.estimating import Progress, SetResult, estimate_sets
 from adjustplan.estimate.fit_result import Fit
 from adjustplan.estimate.loading import Loaded, load
 from adjustplan.estimate.missing.handling import Incomplete
-from adjustplan.estimate.modelling import estimate_effect
 from adjustplan.estimate.people import into_the_analysis
 from adjustplan.estimate.resampled_intervals import with_resampled_intervals
 from adjustplan.estimate.results import AdjustedEstimate, WayEstimate
 from adjustplan.estimate.threads import one_thread
 from adjustplan.estimate.ways import CONDITIONAL
 from adjustplan.plan import Plan
+from adjustplan.plan.analysis_faults import WITHOUT_OUTCOME_MODEL
 
 
 def fit(plan: Plan, *, limit: int = 20, progress: Progress | None = None) -> Fit:
@@ -63,8 +63,8 @@ def fit_of(done: Analysed) -> Fit:
     adjusted, planned = tuple(result.reported() for result in results), results[0]
     with one_thread():
         compared = _agreement(loaded, results)
-        modified, parted = _modification(loaded, planned), _collapsibility(loaded, planned)
-        diagnosed = _diagnostics(loaded, planned)
+        modified, parted = _modification(loaded, done.complete), _collapsibility(loaded, done.complete)
+        diagnosed = _diagnostics(loaded, done.complete)
     setting, plan, question = loaded.setting, loaded.plan, loaded.plan.question
     return Fit(
         measure=setting.measure,
@@ -97,10 +97,14 @@ def fit_of(done: Analysed) -> Fit:
 
 @dataclass(frozen=True, eq=False)
 class Analysed:
-    """The estimates of a plan, with what they were made from."""
+    """The estimates of a plan, with what they were made from.
+
+    ``complete`` is the planned set on complete rows alone, for the analyses that go further.
+    """
 
     loaded: Loaded
     results: Sequence[SetResult]
+    complete: SetResult
     incomplete: Incomplete | None
 
 
@@ -109,11 +113,12 @@ def analyse(plan: Plan, limit: int, progress: Progress | None = None, *, fingerp
     loaded = load(plan, limit, fingerprinted=fingerprinted)
     bootstrap = plan.analysis.bootstrap
     with one_thread():
-        results, incomplete = estimate_sets(loaded, progress)
+        results, complete, incomplete = estimate_sets(loaded, progress)
         if bootstrap is not None:
             told = None if progress is None else partial(progress, "resamples", bootstrap.replicates)
             results = with_resampled_intervals(loaded, results, bootstrap, told)
-    return Analysed(loaded, results, incomplete)
+            complete = results[0]
+    return Analysed(loaded, results, complete, incomplete)
 
 
 def _ways(planned: SetResult) -> tuple[WayEstimate, ...]:
@@ -122,7 +127,7 @@ def _ways(planned: SetResult) -> tuple[WayEstimate, ...]:
     for place, (way, modelled) in enumerate(planned.by_way.items()):
         means = modelled.solution.means if modelled.solution and modelled.estimate else None
         said = modelled.findings if place else ()
-        model = None if way in ("weighting", "stratification") else modelled.model
+        model = None if way in WITHOUT_OUTCOME_MODEL else modelled.model
         found.append(WayEstimate(way, model, CONDITIONAL[way], means, modelled.estimate, planned.rows, said))
     return tuple(found)
 
@@ -154,12 +159,8 @@ def _diagnostics(loaded: Loaded, planned: SetResult) -> Diagnostics | None:
     setting, members, adjusted = loaded.setting, planned.chosen.members, planned.adjusted
     if planned.complete is None or adjusted is None:
         return None
-    weights = None
-    if loaded.plan.analysis.missing != "complete cases":
-        adjusted = estimate_effect(planned.complete, setting, members)
-    else:
-        solutions = [modelled.solution for modelled in planned.by_way.values()]
-        weights = next((one.balance for one in solutions if one is not None and one.balance is not None), None)
+    solutions = [modelled.solution for modelled in planned.by_way.values()]
+    weights = next((one.balance for one in solutions if one is not None and one.balance is not None), None)
     tests, said = proportional_tests(adjusted.row_fit, setting.exposure) if adjusted.row_fit else (None, ())
     return diagnose(
         planned.complete, setting, members, adjusted, weights=weights, proportional_hazards=tests, findings=said

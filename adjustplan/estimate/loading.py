@@ -7,12 +7,11 @@ all of it at once.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 from adjustplan.data import Patterns, Source, Wanted, check_columns, check_values, open_data, reduce_to_patterns
 from adjustplan.data.checks import check_covariate, check_roles
-from adjustplan.data.eligibility import Prepared, apply
-from adjustplan.data.expressions.faults import in_plan
+from adjustplan.data.eligibility import eligible_rows
 from adjustplan.data.flow import Flow
 from adjustplan.data.sources.fingerprint import fingerprint
 from adjustplan.errors import DataError, Finding, PlanError
@@ -21,12 +20,9 @@ from adjustplan.estimate.problem import Setting, Variance
 from adjustplan.estimate.sets import ReportedSet, reported_sets
 from adjustplan.identify.showing import with_article
 from adjustplan.plan import Plan
-from adjustplan.plan.analysis_faults import analysis_faults, model_for
-from adjustplan.plan.analysis_schema import Analysis, Model, Weighting
+from adjustplan.plan.analysis_faults import ROW_MODELS, analysis_faults, model_for
+from adjustplan.plan.analysis_schema import Analysis, Weighting
 from adjustplan.study import DESIGNS, KINDS
-
-ROW_MODELS: tuple[Model, ...] = ("cox", "conditional logistic", "negative binomial")
-"""Models that need rows, because no sums over a pattern carry what they use."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -81,7 +77,7 @@ def load(plan: Plan, limit: int, *, fingerprinted: bool = False) -> Loaded:
     _refuse(plan)
     question, analysis = plan.question, plan.analysis
     with open_data(plan.data_place, table=plan.data_table, folder=plan.path.parent) as raw:
-        source, prepared = _eligible(plan, raw)
+        source, prepared = eligible_rows(plan, raw)
         ends = [question.exposure, question.outcome]
         usable = {
             variable.name
@@ -112,14 +108,6 @@ def load(plan: Plan, limit: int, *, fingerprinted: bool = False) -> Loaded:
     flow = prepared.flow if prepared else Flow.start(patterns.total)
     told = (*source.notes, *(prepared.findings if prepared else ()), *notes, *coding.findings)
     return Loaded(plan, setting, patterns, sets, told, by_variable, missing, flow, source.place, mark)
-
-
-def _eligible(plan: Plan, source: Source) -> tuple[Source, Prepared | None]:
-    """The rows that the plan speaks of; all of them where it does not say."""
-    if plan.file.data is None:
-        return source, None
-    prepared = apply(source.table, source.kinds, plan.file.data, source.repeated, in_plan(plan))
-    return replace(source, table=prepared.table, kinds=prepared.kinds), prepared
 
 
 def _wanted(plan: Plan, columns: Mapping[str, str]) -> Wanted:

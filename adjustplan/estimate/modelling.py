@@ -103,15 +103,12 @@ def pose(patterns: Patterns, setting: Setting, members: Sequence[str]) -> tuple[
     said = list(matrix.findings)
     matrix, collinear = without_collinearity(matrix, matrix.columns, patterns, setting)
     said += collinear
-    exposure = patterns.values[setting.exposure].to_numpy()
-    levels = setting.coding.form == "category"
     cluster = pd.factorize(patterns.keys["cluster"], sort=True)[0] if setting.variance == "cluster" else None
     return Problem(
         matrix,
         patterns.moments,
         cluster,
-        np.asarray(exposure == setting.coding.exposed) & levels,
-        np.asarray(exposure == setting.coding.reference) & levels,
+        *setting.coding.groups(patterns.values[setting.exposure].to_numpy()),
         setting,
     ), tuple(said)
 

@@ -7,6 +7,7 @@ that looks like one, and the findings beside it say why.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import asdict, dataclass
 from typing import Any, Literal, Protocol
@@ -15,6 +16,10 @@ from adjustplan.errors import Finding
 from adjustplan.plan.analysis_schema import Model, Way
 
 Origin = Literal["planned", "alternative", "minimal"]
+
+
+NORMAL_QUANTILE = 1.959963984540054
+"""The factor of a 95 % interval by the normal distribution."""
 
 
 class Section(Protocol):
@@ -48,6 +53,29 @@ class Estimate:
     lower: float
     upper: float
     standard_error: float
+
+
+def with_interval(value: float, error: float, *, ratio: bool, quantile: float = NORMAL_QUANTILE) -> Estimate:
+    """An estimate with its 95 % interval, from its value and standard error on the scale on which that is symmetric.
+
+    Parameters
+    ----------
+    value, error : float
+        For a ratio, of its natural logarithm.
+    ratio : bool
+        Whether the estimate and its limits are the exponentials; what is too large for the arithmetic is infinite.
+    quantile : float
+    """
+    numbers = (value, value - quantile * error, value + quantile * error)
+    estimate, lower, upper = map(_exponential, numbers) if ratio else numbers
+    return Estimate(estimate, lower, upper, error)
+
+
+def _exponential(number: float) -> float:
+    try:
+        return math.exp(number)
+    except OverflowError:
+        return math.inf
 
 
 @dataclass(frozen=True, slots=True)
@@ -125,6 +153,16 @@ def interval_text(result: Estimate | AdjustedEstimate | None) -> str:
     if result is None or result.estimate is None:
         return "not estimated"
     return f"{result.estimate:.3g} ({result.lower:.3g} to {result.upper:.3g})"
+
+
+def chi_square_text(statistic: float, degrees: int) -> str:
+    """``χ² = 5.2, 3 degrees of freedom``."""
+    return f"χ² = {statistic:.3g}, {degrees} degree{'' if degrees == 1 else 's'} of freedom"
+
+
+def p_text(p: float) -> str:
+    """``p = 0.04``, or that it is below 0.001."""
+    return "p < 0.001" if p < 0.001 else f"p = {p:.2g}"
 
 
 def aligned(rows: Sequence[Sequence[str]]) -> list[str]:

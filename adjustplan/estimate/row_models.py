@@ -23,13 +23,12 @@ from adjustplan.estimate.matrix import ModelMatrix, model_matrix
 from adjustplan.estimate.not_estimable import NotEstimableError
 from adjustplan.estimate.penalised import penalised_logistic
 from adjustplan.estimate.problem import Setting
-from adjustplan.estimate.results import Estimate
+from adjustplan.estimate.results import NORMAL_QUANTILE, Estimate
 from adjustplan.estimate.rows.conditional_logistic import columns_within_sets, conditional_logistic
 from adjustplan.estimate.rows.cox import columns_within_risk_sets, cox
 from adjustplan.estimate.rows.negative_binomial import negative_binomial
 from adjustplan.estimate.rows.result import RowRegression
-
-_NORMAL_QUANTILE = 1.959963984540054
+from adjustplan.plan.analysis_faults import ROW_MODELS
 
 
 @dataclass(frozen=True, eq=False)
@@ -80,7 +79,7 @@ class RowFit:
 
 def needs_rows(setting: Setting) -> bool:
     """Whether the planned model runs on atoms that are not pooled."""
-    return setting.way == "regression" and setting.model in ("cox", "conditional logistic", "negative binomial")
+    return setting.way == "regression" and setting.model in ROW_MODELS
 
 
 def has_own_interval(setting: Setting) -> bool:
@@ -226,8 +225,8 @@ def _read(
     return RowFit(
         value,
         error,
-        value - _NORMAL_QUANTILE * error,
-        value + _NORMAL_QUANTILE * error,
+        value - NORMAL_QUANTILE * error,
+        value + NORMAL_QUANTILE * error,
         result,
         matrix,
         patterns.mean,

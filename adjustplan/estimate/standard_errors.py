@@ -8,12 +8,10 @@ from collections.abc import Sequence
 import numpy as np
 
 from adjustplan.data import Floats
-from adjustplan.estimate.kernel import Influence, Regression, covariance
+from adjustplan.estimate.kernel import Influence, Regression, covariance, pattern_sums
 from adjustplan.estimate.not_estimable import NotEstimableError
 from adjustplan.estimate.problem import Problem, Solution
-from adjustplan.estimate.results import Estimate
-
-NORMAL_QUANTILE = 1.959963984540054
+from adjustplan.estimate.results import NORMAL_QUANTILE, Estimate, with_interval
 
 
 def in_words(problem: Problem, solution: Solution) -> Estimate:
@@ -24,17 +22,14 @@ def in_words(problem: Problem, solution: Solution) -> Estimate:
     NotEstimableError
         If a number is too large for the arithmetic.
     """
-    value, error = solution.value, standard_error(problem, solution)
-    reach = quantile(problem) * error
-    numbers = [value, value - reach, value + reach]
     ratio = problem.setting.scale != "difference"
-    if ratio:
-        with np.errstate(over="ignore"):
-            numbers = [float(np.exp(number)) for number in numbers]
-    if not all(map(math.isfinite, [*numbers, error])) or (ratio and numbers[0] == 0):
+    error = standard_error(problem, solution)
+    found = with_interval(solution.value, error, ratio=ratio, quantile=quantile(problem))
+    numbers = (found.estimate, found.lower, found.upper, error)
+    if not all(map(math.isfinite, numbers)) or (ratio and found.estimate == 0):
         message = f"The {problem.setting.measure} or its interval is too large for the arithmetic."
         raise NotEstimableError("estimate-overflow", message, "Look for rare levels, or another unit of the exposure.")
-    return Estimate(numbers[0], numbers[1], numbers[2], error)
+    return found
 
 
 def standard_error(problem: Problem, solution: Solution) -> float:
@@ -57,11 +52,7 @@ def joint_covariance(problem: Problem, parts: Sequence[Influence]) -> Floats:
     total = covariance(parts, problem.moments, problem.cluster)
     if problem.projection is None or problem.cluster is not None:
         return total
-    moments = problem.moments
-    sums = np.column_stack(
-        [moments.weight * (part.constant + part.outcome * moments.mean + part.time * moments.time) for part in parts]
-    )
-    along = problem.projection.scores.T @ sums
+    along = problem.projection.scores.T @ pattern_sums(parts, problem.moments)
     return np.asarray(total - along.T @ problem.projection.inverse @ along)
 
 

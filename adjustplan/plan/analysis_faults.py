@@ -58,6 +58,13 @@ _NO_WAY: Mapping[Way, tuple[Measure, ...]] = MappingProxyType(
 """The measures that a way to adjust is not built for."""
 
 
+ROW_MODELS: tuple[Model, ...] = ("cox", "conditional logistic", "negative binomial")
+"""Models that need rows, because no sums over a pattern carry what they use."""
+
+WITHOUT_OUTCOME_MODEL: tuple[Way, ...] = ("weighting", "stratification")
+"""The ways to adjust that use no regression of the outcome."""
+
+
 def model_for(analysis: Analysis, way: Way) -> Model:
     """The outcome regression of a way to adjust: the planned one, or the usual one."""
     choices = MODELS[analysis.measure] if way == "regression" else PREDICTING[analysis.measure]
@@ -127,8 +134,8 @@ def _of_variance(analysis: Analysis) -> Iterator[Misfit]:
     elif analysis.variance == "model" and analysis.way != "regression":
         message = f"Adjusting by {analysis.way} has no variance of a model."
         yield Misfit("model-choice", message, "Take variance out.", key)
-    row_models = ("cox", "conditional logistic", "negative binomial", "penalised logistic")
-    if weighted and model_for(analysis, analysis.way) in row_models and analysis.way == "regression":
+    unweighted = (*ROW_MODELS, "penalised logistic")
+    if weighted and model_for(analysis, analysis.way) in unweighted and analysis.way == "regression":
         message = f"A {model_for(analysis, analysis.way)} model is not built for weights here."
         key = ("analysis", "weights" if analysis.weights else "missing")
         yield Misfit("model-choice", message, "Take the weights out, or choose another model.", key)

@@ -80,7 +80,9 @@ def _method(fit: Fit) -> str:
 
 def _meaning(fit: Fit) -> str:
     """Whether the estimate is conditional or marginal, and what follows."""
-    conditional = fit.way in ("regression", "stratification")
+    from adjustplan.estimate.ways import CONDITIONAL  # there is a fit, so it is loaded
+
+    conditional = CONDITIONAL[fit.way]
     odd = fit.measure in ("odds ratio", "hazard ratio")
     compared = (
         "The estimate is *conditional*: it compares people who are alike in the covariates."

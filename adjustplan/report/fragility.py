@@ -6,7 +6,7 @@ from collections.abc import Iterator
 from typing import TYPE_CHECKING
 
 from adjustplan.report.markdown import table, text
-from adjustplan.report.numbers import figure
+from adjustplan.report.numbers import limits
 
 if TYPE_CHECKING:
     from adjustplan.estimate.stress import Fragility
@@ -24,7 +24,11 @@ def fragility_section(fragility: Fragility | None) -> Iterator[str]:
     if fragility.unmeasured:
         yield "\n".join(f"- {text(said_of_unmeasured(fragility, name))}" for name in fragility.unmeasured)
     rows = [
-        (text(str(row["assumption"])), text(str(row["name"])), _limits(row["estimate"], row["lower"], row["upper"]))
+        (
+            text(str(row["assumption"])),
+            text(str(row["name"])),
+            limits(row["estimate"], row["lower"], row["upper"]) or "none",
+        )
         for row in fragility.records()
     ]
     yield table(("Assumption", "", f"{fragility.measure.capitalize()} that is left"), rows)
@@ -34,9 +38,3 @@ def fragility_section(fragility: Fragility | None) -> Iterator[str]:
             for finding in fragility.findings
         )
     yield " ".join(text(caution) for caution in CAUTIONS)
-
-
-def _limits(estimate: float | None, lower: float | None, upper: float | None) -> str:
-    if estimate is None or lower is None or upper is None:
-        return "none"
-    return f"{figure(estimate)} ({figure(lower)} to {figure(upper)})"

@@ -25,6 +25,11 @@ def figure(value: float) -> str:
 
 def interval(result: Interval | None) -> str:
     """An estimate and its 95 % confidence interval: ``1.62 (1.30 to 2.02)``."""
-    if result is None or result.estimate is None or result.lower is None or result.upper is None:
-        return "not estimated"
-    return f"{figure(result.estimate)} ({figure(result.lower)} to {figure(result.upper)})"
+    return (result and limits(result.estimate, result.lower, result.upper)) or "not estimated"
+
+
+def limits(estimate: float | None, lower: float | None, upper: float | None) -> str | None:
+    """A number and its limits, in the same form; None where one is missing."""
+    if estimate is None or lower is None or upper is None:
+        return None
+    return f"{figure(estimate)} ({figure(lower)} to {figure(upper)})"

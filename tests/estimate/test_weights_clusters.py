@@ -16,13 +16,12 @@ import numpy as np
 import pandas as pd
 import pytest
 import statsmodels.api as sm
+from estimate.planned_numbers import agree, numbers_of
 from scipy.stats import norm, t
 from truth.stacked_equations import FAMILIES, Rows, doubly_robust, regression, standardised, weighted
 
 from adjustplan.errors import PlanError
 from adjustplan.estimate import fit
-from adjustplan.estimate.loading import load
-from adjustplan.estimate.modelling import estimate_effect
 from adjustplan.plan.analysis_faults import MODELS
 from adjustplan.study import SCALES, Measure
 
@@ -111,24 +110,9 @@ def planned(write_plan):
             data="rows.parquet",
             **settings,
         )
-        loaded = load(plan, 0)
-        complete = loaded.patterns.complete(["night_work", *plan.adjustment.members])
-        modelled = estimate_effect(complete, loaded.setting, loaded.sets[0].members)
-        found = modelled.estimate
-        assert found is not None, modelled.findings
-        numbers = [found.estimate, found.lower, found.upper]
-        if SCALES[measure] != "difference":
-            numbers = [math.log(number) for number in numbers]
-        return np.array([numbers[0], found.standard_error, *numbers[1:]])
+        return numbers_of(plan)
 
     return run
-
-
-def agree(found: np.ndarray, value: float, error: float, quantile: float = norm.ppf(0.975)) -> None:
-    """Whether estimate, standard error and interval are these."""
-    assert found[0] == pytest.approx(value, rel=1e-8)
-    assert found[1] == pytest.approx(error, rel=1e-7)
-    assert found[2:] == pytest.approx([value - quantile * error, value + quantile * error], rel=1e-7, abs=1e-8)
 
 
 def by_statsmodels(measure: str, model: str, given: str) -> tuple[float, float]:

@@ -23,10 +23,11 @@ from adjustplan.data import Floats, Patterns
 from adjustplan.errors import Finding
 from adjustplan.estimate.modelling import Modelled, estimate_effect
 from adjustplan.estimate.problem import Setting
-from adjustplan.estimate.results import Estimate, aligned, interval_text
+from adjustplan.estimate.results import Estimate, aligned, chi_square_text, interval_text, p_text, with_interval
 from adjustplan.estimate.row_models import needs_rows
 from adjustplan.estimate.rows.result import sandwich
 from adjustplan.estimate.standard_errors import joint_covariance
+from adjustplan.estimate.ways import CONDITIONAL
 from adjustplan.identify.showing import set_text
 from adjustplan.plan.analysis_schema import Way
 
@@ -89,8 +90,8 @@ class Agreement:
         """What the test says, in a sentence."""
         if self.p is None:
             return "The sets cannot disagree: their estimates are the same function of these data."
-        test = f"χ² = {self.statistic:.3g}, {self.degrees} degree{'' if self.degrees == 1 else 's'} of freedom"
-        shown = "p < 0.001" if self.p < 0.001 else f"p = {self.p:.2g}"
+        assert self.statistic is not None  # there is a p
+        test, shown = chi_square_text(self.statistic, self.degrees), p_text(self.p)
         if self.p >= SIGNIFICANT:
             return f"The sufficient sets agree within chance ({test}, {shown})."
         return (
@@ -130,7 +131,7 @@ def agreement(patterns: Patterns, setting: Setting, sets: Sequence[tuple[str, ..
     sets : sequence of tuple of str
         Those that the graph calls sufficient.
     """
-    conditional = setting.measure == "odds ratio" and setting.way in ("regression", "stratification")
+    conditional = setting.measure == "odds ratio" and CONDITIONAL[setting.way]
     if conditional and setting.model != "conditional logistic":
         setting = setting.by("standardisation", "logistic")
     elif setting.way == "stratification":
@@ -165,7 +166,7 @@ def agreement(patterns: Patterns, setting: Setting, sets: Sequence[tuple[str, ..
         degrees,
         float(chdtrc(degrees, statistic)) if degrees else None,
         (high, low),
-        _between(values[high] - values[low], error, setting),
+        with_interval(values[high] - values[low], error, ratio=setting.scale != "difference"),
         setting.model not in ("cox", "conditional logistic") or setting.way != "regression",
     )
 
@@ -190,9 +191,3 @@ def _covariance(found: Sequence[Modelled]) -> Floats:
 
 def _value(estimate: Estimate, setting: Setting) -> float:
     return estimate.estimate if setting.scale == "difference" else math.log(estimate.estimate)
-
-
-def _between(value: float, error: float, setting: Setting) -> Estimate:
-    numbers = (value, value - 1.959963984540054 * error, value + 1.959963984540054 * error)
-    shown = numbers if setting.scale == "difference" else tuple(math.exp(number) for number in numbers)
-    return Estimate(shown[0], shown[1], shown[2], error)

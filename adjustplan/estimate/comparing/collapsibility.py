@@ -18,10 +18,8 @@ from adjustplan.data import Patterns
 from adjustplan.errors import Finding
 from adjustplan.estimate.modelling import estimate_effect
 from adjustplan.estimate.problem import Setting
-from adjustplan.estimate.results import Estimate, aligned, interval_text
+from adjustplan.estimate.results import Estimate, aligned, interval_text, with_interval
 from adjustplan.estimate.standard_errors import joint_covariance
-
-_NORMAL_QUANTILE = 1.959963984540054
 
 
 @dataclass(frozen=True)
@@ -98,11 +96,10 @@ def collapsibility(patterns: Patterns, setting: Setting, members: tuple[str, ...
     assert other is not None
     value = conditional.solution.value - marginal.solution.value
     error = math.sqrt(max(float(joint_covariance(marginal.problem, [one - other])[0, 0]), 0.0))
-    limits = [math.exp(value + side * _NORMAL_QUANTILE * error) for side in (-1, 1)]
     return Collapsibility(
         crude.estimate,
         marginal.estimate,
         conditional.estimate,
         crude.estimate.estimate / marginal.estimate.estimate,
-        Estimate(math.exp(value), limits[0], limits[1], error),
+        with_interval(value, error, ratio=True),
     )

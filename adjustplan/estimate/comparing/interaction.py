@@ -29,9 +29,7 @@ import numpy as np
 from adjustplan.data import Floats
 from adjustplan.estimate.diagnostics.wald import WaldTest, wald_test
 from adjustplan.estimate.not_estimable import NotEstimableError
-from adjustplan.estimate.results import Estimate
-
-_NORMAL_QUANTILE = 1.959963984540054
+from adjustplan.estimate.results import NORMAL_QUANTILE, Estimate, with_interval
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,7 +58,7 @@ def modification(
     *,
     reference: int = 0,
     ratio: bool = True,
-    quantile: float = _NORMAL_QUANTILE,
+    quantile: float = NORMAL_QUANTILE,
 ) -> Modification:
     """Effects by level of a modifier, and how they differ.
 
@@ -132,7 +130,7 @@ def joint_effects(coefficients: Floats, covariance: Floats, contrasts: Floats) -
 
 def ratio_of_ratios(joint: JointEffects) -> Estimate:
     """R11 / (R10 R01): interaction on the multiplicative scale; the standard error is that of its logarithm."""
-    return _linear(np.array([-1.0, -1.0, 1.0]), joint.values, joint.covariance, True, _NORMAL_QUANTILE)
+    return _linear(np.array([-1.0, -1.0, 1.0]), joint.values, joint.covariance, True, NORMAL_QUANTILE)
 
 
 def relative_excess_risk(joint: JointEffects) -> Estimate:
@@ -169,7 +167,7 @@ def synergy_index(joint: JointEffects) -> Estimate:
         remedy = "Compare with the level at which the outcome is rarest, or report the relative excess risk alone."
         raise NotEstimableError("estimate-synergy", message, remedy, "note")
     gradient = np.array([-r10 / sum_of_each, -r01 / sum_of_each, r11 / both])
-    return _linear(gradient, joint.values, joint.covariance, True, _NORMAL_QUANTILE, math.log(both / sum_of_each))
+    return _linear(gradient, joint.values, joint.covariance, True, NORMAL_QUANTILE, math.log(both / sum_of_each))
 
 
 def _ratios(joint: JointEffects) -> tuple[float, float, float]:
@@ -179,7 +177,7 @@ def _ratios(joint: JointEffects) -> tuple[float, float, float]:
 
 
 def _delta(value: float, gradient: Floats, joint: JointEffects) -> Estimate:
-    return _linear(gradient, joint.values, joint.covariance, False, _NORMAL_QUANTILE, value)
+    return _linear(gradient, joint.values, joint.covariance, False, NORMAL_QUANTILE, value)
 
 
 def _linear(
@@ -190,9 +188,8 @@ def _linear(
         centre = float(gradient @ values) if value is None else value
         variance = float(gradient @ covariance @ gradient)
         error = math.sqrt(variance) if variance > 0 else math.nan
-        numbers = np.array([centre, centre - quantile * error, centre + quantile * error])
-        estimate, lower, upper = map(float, np.exp(numbers) if ratio else numbers)
-    if not all(map(math.isfinite, (estimate, lower, upper))) or (ratio and lower == 0):
+        found = with_interval(centre, error, ratio=ratio, quantile=quantile)
+    if not all(map(math.isfinite, (found.estimate, found.lower, found.upper))) or (ratio and found.lower == 0):
         message = "A measure of interaction or its interval is too large for the arithmetic, or has no variance."
         raise NotEstimableError("estimate-interaction", message, "Look for rare levels of the exposure or modifier.")
-    return Estimate(estimate, lower, upper, error)
+    return found

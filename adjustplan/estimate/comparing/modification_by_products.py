@@ -26,9 +26,9 @@ from adjustplan.estimate.matrix import ModelMatrix, model_matrix
 from adjustplan.estimate.modelling import in_place_of_log_binomial, pose
 from adjustplan.estimate.not_estimable import NotEstimableError
 from adjustplan.estimate.problem import Setting
-from adjustplan.estimate.results import Estimate
+from adjustplan.estimate.results import NORMAL_QUANTILE, Estimate
 from adjustplan.estimate.row_models import fit_rows, has_own_interval
-from adjustplan.estimate.standard_errors import NORMAL_QUANTILE, dispersion, joint_covariance, quantile
+from adjustplan.estimate.standard_errors import dispersion, joint_covariance, quantile
 from adjustplan.estimate.ways.regression import on_contrast, outcome_regression
 
 _PLACES = 400

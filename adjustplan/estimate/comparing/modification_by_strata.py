@@ -10,6 +10,7 @@ import pandas as pd
 from adjustplan.data import Floats, Patterns
 from adjustplan.estimate.comparing.interaction import modification
 from adjustplan.estimate.comparing.stratum_effects import EffectModification, StratumEffect, places_of
+from adjustplan.estimate.kernel import pattern_sums
 from adjustplan.estimate.modelling import Modelled, estimate_effect
 from adjustplan.estimate.not_estimable import NotEstimableError
 from adjustplan.estimate.problem import Setting
@@ -58,8 +59,7 @@ def _across_clusters(parts: Sequence[Modelled], clusters: Sequence[pd.Series]) -
         assert modelled.problem is not None
         assert modelled.solution is not None
         assert modelled.solution.influence is not None
-        moments, influence = modelled.problem.moments, modelled.solution.influence
-        each = influence.constant + influence.outcome * moments.mean + influence.time * moments.time
-        sums.append(pd.Series(moments.weight * each).groupby(cluster.to_numpy()).sum())
+        each = pattern_sums([modelled.solution.influence], modelled.problem.moments)[:, 0]
+        sums.append(pd.Series(each).groupby(cluster.to_numpy()).sum())
     table = pd.concat(sums, axis=1).fillna(0.0).to_numpy()
     return np.asarray(table.T @ table)

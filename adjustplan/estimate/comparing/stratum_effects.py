@@ -87,10 +87,7 @@ class EffectModification:
                     f" synergy index {interval_text(stratum.synergy_index)}"
                 )
         if self.test:
-            degrees = f"{self.test.degrees} degree{'' if self.test.degrees == 1 else 's'} of freedom"
-            lines.append(
-                f"  Same effect in all levels: χ² = {self.test.statistic:.3g}, {degrees}, p = {self.test.p:.2g}"
-            )
+            lines.append(f"  Same effect in all levels: {self.test.text}")
         return lines
 
 

@@ -41,12 +41,12 @@ from adjustplan.estimate.not_estimable import NotEstimableError
 from adjustplan.estimate.problem import Problem, Setting, Solution
 from adjustplan.estimate.row_models import has_own_interval
 from adjustplan.estimate.ways.propensity import propensity
+from adjustplan.plan.analysis_faults import WITHOUT_OUTCOME_MODEL
 
 __all__ = ["Absent", "Diagnostics", "NamedTest", "WeightDiagnostics", "diagnose"]
 
 MOST_REFITTED = 300_000
 """Patterns times covariates up to which straight lines are tested by fitting again; the rest is left out, and said."""
-_NO_OUTCOME_MODEL = ("weighting", "stratification")
 
 
 @dataclass(frozen=True, eq=False)
@@ -232,7 +232,7 @@ def _weights(case: _Case) -> WeightDiagnostics:
 
 def _outcomes(case: _Case) -> OutcomesPerParameter:
     kind, moments = case.setting.kind, case.problem.moments
-    if case.setting.way in _NO_OUTCOME_MODEL:
+    if case.setting.way in WITHOUT_OUTCOME_MODEL:
         raise AbsentError(f"{case.setting.way} has no model of the outcome.")
     if kind == "mean":
         raise AbsentError("the outcome is a quantity, and the rule is about people who have an outcome.")
@@ -294,7 +294,7 @@ def _linearity(case: _Case, desk: Desk) -> tuple[Departure, ...] | None:
 
 def _inflation(case: _Case) -> Inflation:
     _needs_members(case)
-    if case.setting.way in _NO_OUTCOME_MODEL:
+    if case.setting.way in WITHOUT_OUTCOME_MODEL:
         raise AbsentError(f"{case.setting.way} has no model of the outcome.")
     matrix = case.problem.matrix
     if case.problem.setting.modifier in case.members and case.problem.setting.way != "regression":

@@ -99,11 +99,7 @@ def linearity_findings(result: Departure) -> tuple[Finding, ...]:
     """A warning where a curve fits better than the line, a note where that hardly moves the estimate."""
     if not result.test.p < SIGNIFICANT:
         return ()
-    degrees = f"{result.test.degrees} degree{'s' if result.test.degrees > 1 else ''} of freedom"
-    message = (
-        f"“{result.variable}” enters as a straight line, but a curve fits better (χ² = {result.test.statistic:.3g},"
-        f" {degrees}, p = {result.test.p:.2g})"
-    )
+    message = f"“{result.variable}” enters as a straight line, but a curve fits better ({result.test.text})"
     severity: Severity = "warning"
     if result.shift is None:
         message += "."

@@ -12,6 +12,7 @@ from adjustplan.errors import Finding
 from adjustplan.estimate.diagnostics.section import NamedTest
 from adjustplan.estimate.diagnostics.wald import WaldTest
 from adjustplan.estimate.not_estimable import NotEstimableError
+from adjustplan.estimate.results import p_text
 from adjustplan.estimate.row_models import RowFit
 from adjustplan.estimate.rows.hazards import proportional_hazards
 
@@ -49,7 +50,7 @@ def proportional_tests(fitted: RowFit, exposure: str) -> tuple[tuple[NamedTest, 
 
 
 def _changes(name: str, p: float, exposure: str) -> Finding:
-    shown = "p < 0.001" if p < 0.001 else f"p = {p:.2g}"
+    shown = p_text(p)
     if name == exposure:
         message = f"The hazard ratio of “{name}” changes over time ({shown}), so one number is an average over it."
         remedy = "Report risks at stated times, or hazard ratios by period of follow-up."

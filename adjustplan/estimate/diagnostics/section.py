@@ -146,7 +146,7 @@ class Diagnostics:
         if self.inflation:
             lines.append(f"  Variance inflation of the exposure: {self.inflation.contrast:.3g}")
         for named in self.proportional_hazards or ():
-            lines.append(f"  Proportional hazards, {named.name}: {_test_text(named.test)}")
+            lines.append(f"  Proportional hazards, {named.name}: {named.test.text}")
         return [*lines, *(f"  {each.diagnostic}: not given, for {each.reason}" for each in self.absent)]
 
 
@@ -253,12 +253,7 @@ def _departure_dict(found: Departure) -> dict[str, Any]:
 
 def _departure_text(found: Departure) -> str:
     shift = "" if found.shift is None else f"; a curve moves the estimate by {found.shift:+.2f} standard errors"
-    return _test_text(found.test) + shift
-
-
-def _test_text(test: WaldTest) -> str:
-    degrees = f"{test.degrees} degree{'' if test.degrees == 1 else 's'} of freedom"
-    return f"χ² = {test.statistic:.3g}, {degrees}, p = {test.p:.2g}"
+    return found.test.text + shift
 
 
 def _rounded(value: float) -> float:

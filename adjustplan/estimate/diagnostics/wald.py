@@ -8,6 +8,7 @@ import numpy as np
 
 from adjustplan.data import Floats
 from adjustplan.estimate.not_estimable import NotEstimableError
+from adjustplan.estimate.results import chi_square_text
 
 _RANK_TOLERANCE = 1e-10
 
@@ -19,6 +20,11 @@ class WaldTest:
     statistic: float
     degrees: int
     p: float
+
+    @property
+    def text(self) -> str:
+        """``χ² = 5.2, 3 degrees of freedom, p = 0.16``."""
+        return f"{chi_square_text(self.statistic, self.degrees)}, p = {self.p:.2g}"
 
 
 def wald_test(values: Floats, covariance: Floats) -> WaldTest:

@@ -4,7 +4,7 @@ Nothing in here knows files, plans or names of variables; it sees arrays with on
 """
 
 from adjustplan.estimate.kernel.families import FAMILIES, Family
-from adjustplan.estimate.kernel.influence import Influence, cluster_sums, covariance
+from adjustplan.estimate.kernel.influence import Influence, covariance, pattern_sums
 from adjustplan.estimate.kernel.newton import Regression, Sums, iterate, regress, sums_at
 
 __all__ = [
@@ -13,9 +13,9 @@ __all__ = [
     "Influence",
     "Regression",
     "Sums",
-    "cluster_sums",
     "covariance",
     "iterate",
+    "pattern_sums",
     "regress",
     "sums_at",
 ]

@@ -75,10 +75,14 @@ def covariance(parts: Sequence[Influence], moments: Moments, cluster: NDArray[np
 
 def cluster_sums(parts: Sequence[Influence], moments: Moments, cluster: NDArray[np.intp], clusters: int) -> Floats:
     """The sums of influences within each cluster, shape (clusters, estimates); they add up over blocks of rows."""
-    constant, outcome, time = _stacked(parts)
-    each = constant + outcome * _known(moments.mean) + time * _known(moments.time)
-    each = each * moments.weight[:, None]
+    each = pattern_sums(parts, moments)
     return np.column_stack([np.bincount(cluster, weights=column, minlength=clusters) for column in each.T])
+
+
+def pattern_sums(parts: Sequence[Influence], moments: Moments) -> Floats:
+    """The sums of influences over the people of each pattern, shape (patterns, estimates)."""
+    constant, outcome, time = _stacked(parts)
+    return (constant + outcome * _known(moments.mean) + time * _known(moments.time)) * moments.weight[:, None]
 
 
 def _stacked(parts: Sequence[Influence]) -> tuple[Floats, Floats, Floats]:

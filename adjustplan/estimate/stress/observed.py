@@ -6,11 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 from adjustplan.estimate.stress.tables import TwoByTwo
-from adjustplan.study import Measure
-
-DIFFERENCES: frozenset[Measure] = frozenset(
-    {"mean difference", "risk difference", "prevalence difference", "rate difference"}
-)
+from adjustplan.study import SCALES, Measure
 
 
 @dataclass(frozen=True, slots=True)
@@ -76,7 +72,7 @@ class Observed:
     @property
     def is_ratio(self) -> bool:
         """Whether no effect is 1 and not 0."""
-        return self.measure not in DIFFERENCES
+        return SCALES[self.measure] != "difference"
 
     @property
     def no_effect(self) -> float:

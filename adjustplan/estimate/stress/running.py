@@ -12,7 +12,7 @@ from adjustplan.estimate.estimating import Progress, SetResult
 from adjustplan.estimate.fitting import Analysed, analyse
 from adjustplan.estimate.kernel import FAMILIES, regress
 from adjustplan.estimate.modelling import estimate_effect
-from adjustplan.estimate.problem import Problem, Setting
+from adjustplan.estimate.problem import Problem
 from adjustplan.estimate.stress.observed import Observed, Yardstick
 from adjustplan.estimate.stress.results import Fragility
 from adjustplan.estimate.stress.stressing import stress
@@ -49,7 +49,7 @@ def observe(done: Analysed) -> Observed:
         nothing = Finding("stress-no-estimate", message, "Mend what the other findings say.", file=str(plan.path))
         raise DataError([nothing, *planned.reported().findings])
     setting = done.loaded.setting
-    exposed, reference = _groups(planned, setting)
+    exposed, reference = setting.coding.groups(planned.complete.values[setting.exposure].to_numpy())
     moments = planned.complete.moments
     by_model = setting.measure == "mean difference" and setting.way == "regression" and setting.variance == "model"
     problem = planned.adjusted.problem
@@ -69,17 +69,6 @@ def observe(done: Analysed) -> Observed:
         _table(planned, exposed, reference) if setting.kind in ("risk", "hazard") else None,
         float(moments.people.sum() - problem.matrix.columns.shape[1]) if by_model and problem else None,
         yardsticks,
-    )
-
-
-def _groups(planned: SetResult, setting: Setting) -> tuple[np.ndarray, np.ndarray]:
-    """Who has the two levels compared; nobody where the exposure is no category."""
-    assert planned.complete is not None
-    values = planned.complete.values[setting.exposure].to_numpy()
-    levels = setting.coding.form == "category"
-    return (
-        np.asarray(values == setting.coding.exposed) & levels,
-        np.asarray(values == setting.coding.reference) & levels,
     )
 
 

@@ -21,7 +21,7 @@ from adjustplan.data import Floats
 from adjustplan.estimate.existence import looks_separated, separating_direction
 from adjustplan.estimate.kernel import FAMILIES, Influence, Regression
 from adjustplan.estimate.not_estimable import NotEstimableError
-from adjustplan.estimate.problem import Problem, Rows
+from adjustplan.estimate.problem import Problem, Rows, Setting
 
 _LOGISTIC = FAMILIES["logistic"]
 
@@ -98,9 +98,7 @@ def propensity(rows: Rows, start: tuple[Regression, Regression] | None = None) -
     setting = rows.setting
     people, exposed, reference, others = rows.total(_counted)
     if not (exposed > 0 and reference > 0):
-        message = f"“{setting.exposure}” has no levels, which {setting.way} needs."
-        remedy = f'State {setting.exposure} = "category" or "cut(…)" in [analysis.forms], or adjust another way.'
-        raise NotEstimableError("estimate-no-levels", message, remedy)
+        raise no_levels(setting)
     first = _regress(rows, lambda block: block.is_exposed, None if start is None else start[0])
     second = (
         replace(first, coefficients=-first.coefficients)
@@ -113,6 +111,13 @@ def propensity(rows: Rows, start: tuple[Regression, Regression] | None = None) -
         return found
     share = setting.weighting.truncate
     return replace(found, limits=_quantiles(rows, found, (share, 1 - share)))
+
+
+def no_levels(setting: Setting) -> NotEstimableError:
+    """The refusal of a way that compares groups, where the exposure has none."""
+    message = f"“{setting.exposure}” has no levels, which {setting.way} needs."
+    remedy = f'State {setting.exposure} = "category" or "cut(…)" in [analysis.forms], or adjust another way.'
+    return NotEstimableError("estimate-no-levels", message, remedy)
 
 
 def covariate_columns(block: Problem) -> Floats:

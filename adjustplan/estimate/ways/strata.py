@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from adjustplan.data import Floats
 from adjustplan.estimate.not_estimable import NotEstimableError
 from adjustplan.estimate.problem import Problem, Rows, Solution
-from adjustplan.estimate.ways.propensity import covariate_columns
+from adjustplan.estimate.ways.propensity import covariate_columns, no_levels
 from adjustplan.estimate.ways.stratification import Strata, mantel_haenszel, stratification_findings
 
 
@@ -31,9 +31,7 @@ def solve(rows: Rows) -> Solution:
         raise NotEstimableError("estimate-no-levels", message, "State cuts for what enters as a number.")
     problem = rows
     if not (problem.is_exposed.any() and problem.is_reference.any()):
-        message = f"“{setting.exposure}” has no levels, which stratification needs."
-        remedy = f'State {setting.exposure} = "category" or "cut(…)" in [analysis.forms], or adjust another way.'
-        raise NotEstimableError("estimate-no-levels", message, remedy)
+        raise no_levels(setting)
     smooth = [
         name for name in dict.fromkeys(problem.matrix.variables) if name and setting.forms.get(name) != "category"
     ]

@@ -32,9 +32,9 @@ from numpy.typing import NDArray
 from adjustplan.data import Floats
 from adjustplan.errors import Finding
 from adjustplan.estimate.not_estimable import NotEstimableError
+from adjustplan.estimate.results import chi_square_text, with_interval
 from adjustplan.study import Measure
 
-_NORMAL_QUANTILE = 1.959963984540054
 _ROUNDING = 1e-12
 _KINDS: dict[Measure, Measure] = {
     "risk difference": "risk difference",
@@ -185,24 +185,20 @@ def mantel_haenszel(strata: Strata, measure: Measure) -> Stratified:
         remedy = "Merge strata or adjust for less, or use a regression."
         raise NotEstimableError("estimate-no-informative-stratum", message, remedy)
     kept = strata.only(informs)
-    if kind.endswith("ratio"):
-        value, error = _ratio(kept, kind, measure)
-        numbers = np.exp([value, value - _NORMAL_QUANTILE * error, value + _NORMAL_QUANTILE * error])
-    else:
-        value, error = _difference(kept, kind, measure)
-        numbers = np.array([value, value - _NORMAL_QUANTILE * error, value + _NORMAL_QUANTILE * error])
-    estimate, lower, upper = map(float, numbers)
+    ratio = kind.endswith("ratio")
+    value, error = _ratio(kept, kind, measure) if ratio else _difference(kept, kind, measure)
+    found = with_interval(value, error, ratio=ratio)
     return Stratified(
         measure,
-        estimate,
+        found.estimate,
         error,
-        lower,
-        upper,
+        found.lower,
+        found.upper,
         len(informs),
         int(informs.sum()),
         float(strata.total.sum()),
         float(strata.total[~informs].sum()),
-        _homogeneity(kept, kind, estimate),
+        _homogeneity(kept, kind, found.estimate),
     )
 
 
@@ -320,9 +316,9 @@ def stratification_findings(result: Stratified) -> tuple[Finding, ...]:
         message = "The strata are too sparse for a test whether the effect is the same in all of them."
         said.append(Finding("estimate-homogeneity-untested", message, "Compare coarser strata.", "note"))
     if test is not None and test.p < SIGNIFICANT:
-        degrees = f"{test.degrees} degree{'s' if test.degrees > 1 else ''} of freedom"
         message = (
-            f"The {result.measure} differs between strata (χ² = {test.statistic:.3g}, {degrees}, p = {test.p:.2g}),"
+            f"The {result.measure} differs between strata ({chi_square_text(test.statistic, test.degrees)},"
+            f" p = {test.p:.2g}),"
             " so one number for all hides something."
         )
         remedy = "Report it by stratum, or name the variable that modifies it in the plan."
