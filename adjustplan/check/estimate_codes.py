@@ -148,7 +148,7 @@ ESTIMATE_CODES: Mapping[str, str] = MappingProxyType(
         " set, or measured. Take it out, adjust for it, or mark it unmeasured.",
         "stress-name-twice": "Two entries of a list share a name, so their results could not be told apart. Rename"
         " one.",
-        "stress-true-value": "The value to which the estimate is to be moved is none that the measure can have.",
+        "stress-target": "The value to which the estimate is to be moved is none that the measure can have.",
         "stress-no-estimate": "The planned set has no estimate, so there is nothing to put under stress. Mend what"
         " the other findings say.",
         "stress-no-conversion": "The estimate cannot be put as a risk ratio, because what that needs is unknown or"

@@ -245,7 +245,7 @@ class Selection(Table):
 class Stress(Table):
     """How fragile the planned estimate is, under stated assumptions."""
 
-    true_value: Number | None = Field(
+    target: Number | None = Field(
         None, description="The value to which the estimate is asked to be moved; by default no effect."
     )
     yardsticks: list[Name] | None = Field(

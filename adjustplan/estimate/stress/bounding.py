@@ -77,12 +77,12 @@ def partner_strength(factor: float | None, strength: float) -> float | None:
     return 1.0 if factor <= 1 else factor * (strength - 1) / (strength - factor)
 
 
-def bounded(position: Position, true_value: float, with_exposure: float, with_outcome: float) -> Bounded:
-    """What a confounder of these strengths could leave of the estimate, at most moved towards ``true_value``."""
+def bounded(position: Position, target: float, with_exposure: float, with_outcome: float) -> Bounded:
+    """What a confounder of these strengths could leave of the estimate, at most moved towards ``target``."""
     factor = bounding_factor(with_exposure, with_outcome)
-    down = position.estimate >= true_value
+    down = position.estimate >= target
     moved = position.moved(factor, down)
-    there = position.needed(true_value).estimate
+    there = position.needed(target).estimate
     return Bounded(with_exposure, with_outcome, factor, moved, there is not None and factor >= there)
 
 
@@ -95,16 +95,16 @@ def strengths(evalue: float | None) -> tuple[float, ...]:
     return _LADDER[start : start + _STEPS]
 
 
-def bounded_array(position: Position, true_value: float, steps: Sequence[float]) -> tuple[tuple[Bounded, ...], ...]:
+def bounded_array(position: Position, target: float, steps: Sequence[float]) -> tuple[tuple[Bounded, ...], ...]:
     """The estimate that remains for every pair of strengths: a row for each with the exposure."""
-    return tuple(tuple(bounded(position, true_value, first, second) for second in steps) for first in steps)
+    return tuple(tuple(bounded(position, target, first, second) for second in steps) for first in steps)
 
 
-def tipping_points(position: Position, true_value: float, steps: Sequence[float]) -> tuple[Tipping, ...]:
-    """For each strength with the exposure, that with the outcome which moves estimate and limit to ``true_value``."""
+def tipping_points(position: Position, target: float, steps: Sequence[float]) -> tuple[Tipping, ...]:
+    """For each strength with the exposure, that with the outcome which moves estimate and limit to ``target``."""
     if any(first >= second for first, second in pairwise(steps)):
         raise ValueError("strengths rise")
-    needed = position.needed(true_value)
+    needed = position.needed(target)
     return tuple(
         Tipping(step, partner_strength(needed.estimate, step), partner_strength(needed.limit, step)) for step in steps
     )

@@ -30,7 +30,7 @@ class EValue:
         The limit that ``limit`` is about.
     factor, limit_factor : float or None
         The bias that is needed, as a risk ratio of at least 1.
-    true_value : float
+    target : float
         The value to which the estimate is moved.
     conversion : str
         How the measure was put as a risk ratio.
@@ -41,7 +41,7 @@ class EValue:
     side: str
     factor: float | None
     limit_factor: float | None
-    true_value: float
+    target: float
     conversion: str
 
 
@@ -53,24 +53,24 @@ def evalue(ratio: float) -> float:
     return bias + math.sqrt(bias * (bias - 1))
 
 
-def evalues(position: Position, true_value: float) -> EValue:
+def evalues(position: Position, target: float) -> EValue:
     """The E-values of an estimate and of its limit.
 
     Parameters
     ----------
     position : Position
         Where the estimate stands.
-    true_value : float
+    target : float
         The value to which it is moved, on the scale of the measure: 1 for ratios and 0 for differences to explain the
         estimate away.
     """
-    needed = position.needed(true_value)
+    needed = position.needed(target)
     return EValue(
         needed.estimate and evalue(needed.estimate),
         needed.limit and evalue(needed.limit),
         needed.side,
         needed.estimate,
         needed.limit,
-        true_value,
+        target,
         position.words,
     )

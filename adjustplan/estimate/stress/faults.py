@@ -22,13 +22,13 @@ def faults(plan: Plan, assumed: Stress, measure: Measure, *, is_ratio: bool) -> 
             message = f"The yardstick “{name}” is not in the planned set, so it cannot be left out of it."
             remedy = did_you_mean(name, members, "Name members of [adjustment] set.")
             yield _at(plan, "stress-yardstick", message, remedy, "yardsticks")
-    value = assumed.true_value
+    value = assumed.target
     if value is not None and is_ratio and value <= 0:
         message = f"A {measure} cannot truly be {value:g}."
-        yield _at(plan, "stress-true-value", message, "Give a ratio above 0.", "true_value")
+        yield _at(plan, "stress-target", message, "Give a ratio above 0.", "target")
     if value is not None and measure in ("risk difference", "prevalence difference") and not -1 < value < 1:
         message = f"A {measure} cannot truly be {value:g}."
-        yield _at(plan, "stress-true-value", message, "Give a difference between -1 and 1.", "true_value")
+        yield _at(plan, "stress-target", message, "Give a difference between -1 and 1.", "target")
     for kind in _LISTS:
         yield from _of_list(plan, assumed, kind)
 

@@ -115,7 +115,7 @@ class Fragility(Tabular):
     estimate, lower, upper : float
         Adjusted for it.
     crude : float or None
-    true_value, no_effect : float
+    target, no_effect : float
         The value to which the estimate is asked to be moved, and the one that means no effect.
     confounding : Confounding or None
         None where the measure cannot be put as a risk ratio; a finding says why.
@@ -138,7 +138,7 @@ class Fragility(Tabular):
     lower: float
     upper: float
     crude: float | None
-    true_value: float
+    target: float
     no_effect: float
     confounding: Confounding | None
     unmeasured: tuple[str, ...]
@@ -167,8 +167,8 @@ class Fragility(Tabular):
         )
 
     def explains(self, moved: Moved) -> bool:
-        """Whether an estimate that was moved has got to the true value asked for, or beyond."""
-        return (moved.estimate - self.true_value) * (self.estimate - self.true_value) <= 0
+        """Whether an estimate that was moved has got to the target, or beyond."""
+        return (moved.estimate - self.target) * (self.estimate - self.target) <= 0
 
     def to_dict(self) -> dict[str, Any]:
         """The result as JSON-ready values; None stands where there is no number."""

@@ -32,7 +32,7 @@ class Robustness:
     partial_r2 : float
         The share of the outcome's remaining variance that the exposure explains.
     value : float
-        The robustness value for moving the estimate to the true value asked for.
+        The robustness value for moving the estimate to the target.
     limit_value : float
         The same for moving the limit of the 95 % interval there; 0 where it is there already.
     extreme : float
@@ -106,8 +106,8 @@ def robustness_value(t: float, degrees_of_freedom: float, portion: float = 1, al
     return share
 
 
-def robustness(estimate: float, standard_error: float, degrees_of_freedom: float, true_value: float = 0) -> Robustness:
-    """The robustness values of an estimate against a true value, at 95 %.
+def robustness(estimate: float, standard_error: float, degrees_of_freedom: float, target: float = 0) -> Robustness:
+    """The robustness values of an estimate against a target, at 95 %.
 
     Raises
     ------
@@ -116,7 +116,7 @@ def robustness(estimate: float, standard_error: float, degrees_of_freedom: float
     """
     if degrees_of_freedom <= 1 or not 0 < standard_error < math.inf:
         raise ValueError("robustness needs a standard error and more than one degree of freedom")
-    away = (estimate - true_value) / standard_error
+    away = (estimate - target) / standard_error
     return Robustness(
         partial_r2(estimate / standard_error, degrees_of_freedom),
         robustness_value(away, degrees_of_freedom),
@@ -133,15 +133,15 @@ def moved_by(
     share_of_exposure: float,
     share_of_outcome: float,
     *,
-    true_value: float = 0,
+    target: float = 0,
 ) -> LinearMove:
-    """The estimate with a confounder that explains these shares in the model, moved towards ``true_value``."""
+    """The estimate with a confounder that explains these shares in the model, moved towards ``target``."""
     if not (0 <= share_of_exposure < 1 and 0 <= share_of_outcome <= 1):
         raise ValueError("a confounder explains a share from 0 to 1 of the outcome, and less than 1 of the exposure")
     odds = share_of_exposure / (1 - share_of_exposure)
     bias = standard_error * math.sqrt(degrees_of_freedom * share_of_outcome * odds)
     shrunk = (1 - share_of_outcome) / (1 - share_of_exposure) * degrees_of_freedom / (degrees_of_freedom - 1)
     error = standard_error * math.sqrt(shrunk)
-    value = estimate - bias if estimate >= true_value else estimate + bias
+    value = estimate - bias if estimate >= target else estimate + bias
     reach = float(stats.t.ppf(0.975, degrees_of_freedom - 1)) * error
     return LinearMove(share_of_exposure, share_of_outcome, Moved(value, value - reach, value + reach), error)

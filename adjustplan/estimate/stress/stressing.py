@@ -54,7 +54,7 @@ def stress(plan: Plan, observed: Observed) -> Fragility:
     assumed: Stress = plan.file.stress or Stress.model_validate({})
     if found := list(faults(plan, assumed, observed.measure, is_ratio=observed.is_ratio)):
         raise PlanError(found)
-    target = observed.no_effect if assumed.true_value is None else assumed.true_value
+    target = observed.no_effect if assumed.target is None else assumed.target
     said: list[Finding] = []
     position: Position | None = None
     try:
@@ -82,7 +82,7 @@ def stress(plan: Plan, observed: Observed) -> Fragility:
         lower=observed.lower,
         upper=observed.upper,
         crude=observed.crude,
-        true_value=target,
+        target=target,
         no_effect=observed.no_effect,
         confounding=None if position is None else _confounding(assumed, position, target, reaching.names),
         unmeasured=reaching.names,
@@ -164,7 +164,7 @@ def _yardsticks(
                 freedom,
                 covariate.with_exposure,
                 covariate.with_outcome,
-                true_value=target,
+                target=target,
             )
             if move is not None:
                 found.append(Measured(name, "explained variance", move.moved, move, None))
@@ -200,7 +200,7 @@ def _linear_confounders(
                 freedom,
                 each.share_of_exposure,
                 each.share_of_outcome,
-                true_value=target,
+                target=target,
             ),
         )
         for each in sorted(assumed.linear_confounder, key=lambda each: each.name)

@@ -37,7 +37,7 @@ def summary(result: Fragility) -> list[str]:
         if value.limit is None:
             said.append(f"No unmeasured confounding could move the {value.side} limit there.")
         elif value.limit == 1:
-            said.append(f"The 95 % interval holds {_n(result.true_value)} already, so its E-value is 1.")
+            said.append(f"The 95 % interval holds {_n(result.target)} already, so its E-value is 1.")
         else:
             said.append(f"To move the {value.side} limit of {_n(limit)} there, {_n(value.limit)} would be enough.")
         said.append(f"Put as a risk ratio: {value.conversion}.")
@@ -173,8 +173,8 @@ def _table(rows: Sequence[tuple[str, ...]]) -> list[str]:
 
 
 def _target(result: Fragility) -> str:
-    value = _n(result.true_value)
-    return f"{value} (no effect)" if result.true_value == result.no_effect else value
+    value = _n(result.target)
+    return f"{value} (no effect)" if result.target == result.no_effect else value
 
 
 def _interval(moved: Moved) -> str:

@@ -94,7 +94,7 @@ def moved_like(
     covariate_of_outcome: float,
     *,
     times: float = 1,
-    true_value: float = 0,
+    target: float = 0,
 ) -> LinearMove | None:
     """The estimate of a linear model with a confounder as strong as a covariate in it; None where none can be."""
     shares = as_strong_as(covariate_of_exposure, covariate_of_outcome, times)
@@ -106,7 +106,7 @@ def moved_like(
         degrees_of_freedom,
         shares.of_exposure,
         shares.of_outcome,
-        true_value=true_value,
+        target=target,
     )
 
 

@@ -18,8 +18,8 @@ DIFFERENCES = ("risk difference", "prevalence difference", "rate difference")
 RATIOS: tuple[Measure, ...] = tuple(measure for measure in MEASURES if not measure.endswith("difference"))
 
 
-def of_ratio(measure: Measure, *numbers: float, true_value: float = 1, common: bool = False) -> EValue:
-    return evalues(ratio_position(measure, *numbers, common=common), true_value)
+def of_ratio(measure: Measure, *numbers: float, target: float = 1, common: bool = False) -> EValue:
+    return evalues(ratio_position(measure, *numbers, common=common), target)
 
 
 @pytest.mark.parametrize(
@@ -59,12 +59,12 @@ def test_two_strengths_of_the_evalue_bias_by_exactly_the_ratio(ratio: float) -> 
 
 def test_an_estimate_can_be_asked_to_move_to_another_value_than_no_effect() -> None:
     # the bias that is needed is then the ratio of the two (VanderWeele and Ding 2017)
-    told = of_ratio("risk ratio", 3.0, 2.0, 4.5, true_value=1.5)
+    told = of_ratio("risk ratio", 3.0, 2.0, 4.5, target=1.5)
     assert told.estimate == pytest.approx(2 + math.sqrt(2))
     assert told.limit == pytest.approx(4 / 3 + math.sqrt(4 / 9))
-    up = of_ratio("risk ratio", 0.8, 0.6, 1.1, true_value=1.6)
+    up = of_ratio("risk ratio", 0.8, 0.6, 1.1, target=1.6)
     assert (up.estimate, up.side) == (pytest.approx(2 + math.sqrt(2)), "upper")
-    assert of_ratio("risk ratio", 3.0, 2.0, 4.5, true_value=2.5).limit == 1
+    assert of_ratio("risk ratio", 3.0, 2.0, 4.5, target=2.5).limit == 1
 
 
 def test_a_common_odds_ratio_enters_by_its_square_root_and_a_rare_one_as_it_is() -> None:

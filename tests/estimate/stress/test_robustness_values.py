@@ -38,7 +38,7 @@ def test_the_formula_gives_the_estimate_and_error_of_least_squares_with_the_omit
         short.df_resid,
         share(exposure, hidden, x),
         share(outcome, hidden, exposure, x),
-        true_value=-100.0 if full.params[1] < short.params[1] else 100.0,  # the direction in which it moved
+        target=-100.0 if full.params[1] < short.params[1] else 100.0,  # the direction in which it moved
     )
     assert told.moved.estimate == pytest.approx(full.params[1], abs=1e-10)
     assert told.standard_error == pytest.approx(full.bse[1], abs=1e-10)
@@ -95,8 +95,8 @@ def test_no_confounder_weaker_than_the_robustness_value_makes_the_estimate_insig
 def test_the_extreme_scenario_leaves_nothing() -> None:
     told = robustness(-0.4, 0.1, 50)
     assert moved_by(-0.4, 0.1, 50, told.extreme, 1.0).moved.estimate == pytest.approx(0.0, abs=1e-12)
-    other = robustness(-0.4, 0.1, 50, true_value=-0.1)
-    left = moved_by(-0.4, 0.1, 50, other.value, other.value, true_value=-0.1)
+    other = robustness(-0.4, 0.1, 50, target=-0.1)
+    left = moved_by(-0.4, 0.1, 50, other.value, other.value, target=-0.1)
     assert left.moved.estimate == pytest.approx(-0.1)
 
 

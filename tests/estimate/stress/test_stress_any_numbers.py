@@ -83,7 +83,7 @@ def drawn(measure: Measure, rng: np.random.Generator) -> Observed:
 def test_no_number_is_made_up_and_nothing_breaks(tmp_path: Path, measure: Measure) -> None:
     rng = np.random.default_rng(MEASURES.index(measure))
     plan = plan_with(tmp_path, ASSUMED.format(target=""), measure=measure)
-    moved = plan_with(tmp_path, ASSUMED.format(target="true_value = 0.5"), measure=measure)
+    moved = plan_with(tmp_path, ASSUMED.format(target="target = 0.5"), measure=measure)
     answered = 0
     for turn in range(60):
         observed = drawn(measure, rng)

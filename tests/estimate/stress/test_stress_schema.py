@@ -61,7 +61,7 @@ def test_ratios_are_above_0_and_have_no_beta_distribution() -> None:
         {"selection": [{"name": "s", "exposed_with_outcome": 0.5}]},
         {"linear_confounder": [{"name": "u", "share_of_exposure": 1.0, "share_of_outcome": 0.2}]},
         {"draws": 10},
-        {"true_value": float("nan")},
+        {"target": float("nan")},
         {"yardstick": ["age"]},
     ],
 )

@@ -234,8 +234,8 @@ def test_a_risk_difference_without_adjusted_risks_takes_the_crude_one_and_says_s
     assert wrong.confounding is None
 
 
-def test_a_true_value_other_than_no_effect_is_moved_to(tmp_path: Path) -> None:
-    told = stress(plan_with(tmp_path, "[stress]\ntrue_value = 1.2\n"), OBSERVED)
+def test_a_target_other_than_no_effect_is_moved_to(tmp_path: Path) -> None:
+    told = stress(plan_with(tmp_path, "[stress]\ntarget = 1.2\n"), OBSERVED)
     assert told.confounding is not None
     assert told.confounding.evalue.factor == pytest.approx(1.62 / 1.2)
     assert "to 1.2," in str(told)
@@ -294,7 +294,7 @@ CONFOUNDER = '[[stress.confounder]]\nname = "{name}"\nwith_exposure = 2.0\nwith_
     ("text", "code", "words", "below"),
     [
         ('[stress]\nyardsticks = ["agee"]\n', "stress-yardstick", "Did you mean “age”?", 1),
-        ("[stress]\ntrue_value = 0.0\n", "stress-true-value", "cannot truly be 0", 1),
+        ("[stress]\ntarget = 0.0\n", "stress-target", "cannot truly be 0", 1),
         (CONFOUNDER.format(name="age"), "stress-confounder", "in the planned set", 1),
         (CONFOUNDER.format(name="sleep_debt"), "stress-confounder", "measured according to the graph", 1),
         (CONFOUNDER.format(name="diabetes"), "stress-confounder", "is the outcome", 1),
@@ -315,7 +315,7 @@ def test_what_does_not_fit_the_plan_is_refused_with_one_finding_and_its_line(
 
 
 def test_a_risk_difference_beyond_1_is_refused(tmp_path: Path) -> None:
-    plan = plan_with(tmp_path, "[stress]\ntrue_value = 1.5\n", measure="risk difference")
+    plan = plan_with(tmp_path, "[stress]\ntarget = 1.5\n", measure="risk difference")
     with pytest.raises(PlanError, match=r"cannot truly be 1\.5"):
         stress(plan, observed(measure="risk difference", risks=(1.0, 0.0)))
 
